@@ -1,0 +1,214 @@
+"""Annotation: lists, series and frames of structures in, one record for each out, in order, none lost.
+
+These are the calls that other programs use. The numbers are those of `prediction`, the columns those of
+`records`; a structure that cannot be computed is a row with status `refused` and its reason, never an
+exception.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from typing import TYPE_CHECKING, Any
+
+from .records import (
+    PANDAS_TYPES,
+    Column,
+    Record,
+    Value,
+    clean_ph,
+    ranking,
+    record,
+    refused_record,
+    schema,
+    structure_column,
+    unclashed,
+)
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+CHUNK = (
+    250  # structures that go through the stages together; a thousand cost a tenth more, in garbage collection
+)
+
+
+def records_of(structures: Sequence[object], ph: Sequence[float]) -> list[Record]:
+    """One record for each structure of a batch.
+
+    Parameters
+    ----------
+    structures : sequence
+        SMILES or RDKit molecules; anything else (None, NaN, a number) becomes a refused record.
+    ph : sequence of float
+        pH values [-], checked already.
+    """
+    from rdkit import Chem
+
+    from .prediction import predict
+
+    readable = [
+        n for n, item in enumerate(structures) if isinstance(item, str | Chem.Mol) and not _blank(item)
+    ]
+    found: dict[int, Record] = {}
+    for start in range(0, len(readable), CHUNK):
+        part = readable[start : start + CHUNK]
+        batch: list[Any] = [structures[n] for n in part]
+        found.update((n, record(one, ph)) for n, one in zip(part, predict(batch, ph=ph), strict=True))
+    return [
+        found[n] if n in found else refused_record(_why_unread(item), ph) for n, item in enumerate(structures)
+    ]
+
+
+def _blank(item: object) -> bool:
+    return isinstance(item, str) and not item.strip()
+
+
+def _why_unread(item: object) -> str:
+    missing = item is None or _blank(item) or type(item).__name__ in ("NAType", "NaTType")
+    missing = missing or (isinstance(item, float) and item != item)
+    return "no structure given" if missing else f"neither a SMILES nor a molecule: {type(item).__name__}"
+
+
+def annotate(structures: Iterable[object], *, ph: float | Iterable[float] = 7.4) -> pd.DataFrame:
+    """Constants, first site and protonation state of each structure.
+
+    Parameters
+    ----------
+    structures : iterable of str or rdkit.Chem.Mol
+        A list, array, pandas Series or one structure alone. Missing and unreadable entries are rows too.
+    ph : float or iterable of float
+        pH of the state columns [-], -2 to 16; several give columns with `_at_<pH>`.
+
+    Returns
+    -------
+    pandas.DataFrame
+        One row for each structure, in order, columns of `records.schema`; a Series' index is kept.
+
+    Raises
+    ------
+    ValueError
+        pH outside -2 to 16 or not a number.
+    """
+    items, index = _listed(structures)
+    values = clean_ph(ph)
+    return _frame(records_of(items, values), schema(values), index)
+
+
+def annotate_frame(
+    frame: pd.DataFrame, *, smiles_column: str = "smiles", ph: float | Iterable[float] = 7.4
+) -> pd.DataFrame:
+    """The rows of a frame with the columns of `annotate` after their own.
+
+    Pure and without state, so that any engine that maps partitions can call it; an empty partition gives the
+    same columns and types.
+
+    Parameters
+    ----------
+    frame : pandas.DataFrame
+        Any columns; one that clashes with a result column gains `input_`.
+    smiles_column : str
+        Column that holds the structures, in any letter case.
+    ph : float or iterable of float
+        pH of the state columns [-], -2 to 16.
+
+    Raises
+    ------
+    ValueError
+        No such column (the message lists those there are), or a wrong pH.
+    """
+    values = clean_ph(ph)
+    records = records_of(_structures_of(frame, smiles_column), values)
+    return _beside(frame, records, schema(values))
+
+
+def rank(
+    structures: Iterable[object] | pd.DataFrame,
+    *,
+    smiles_column: str = "smiles",
+    ph: float | Iterable[float] = 7.4,
+) -> pd.DataFrame:
+    """The same rows sorted by the first pKaH, strongest base first, with their `rank` in front.
+
+    Parameters
+    ----------
+    structures : iterable of str or rdkit.Chem.Mol, or pandas.DataFrame
+        As for `annotate`, or a frame as for `annotate_frame`.
+    smiles_column : str
+        Column that holds the structures when a frame is given.
+    ph : float or iterable of float
+        pH of the state columns [-], -2 to 16.
+
+    Returns
+    -------
+    pandas.DataFrame
+        Rows without a first pKaH come last, without a rank. The index tells where a row stood in the input.
+
+    Raises
+    ------
+    ValueError
+        A wrong pH, or a frame without such a column.
+    """
+    import pandas as pd
+
+    values = clean_ph(ph)
+    columns = schema(values, ranked=True)
+    frame = structures if isinstance(structures, pd.DataFrame) else None
+    if frame is not None:
+        items, index = _structures_of(frame, smiles_column), frame.index
+    else:
+        items, index = _listed(structures)
+    records = records_of(items, values)
+    order = ranking(records)
+    rows: list[tuple[Value, ...]] = [(place, *records[n]) for place, n in order]
+    positions = [n for _, n in order]
+    if index is None:
+        index = pd.RangeIndex(len(items))
+    ranked = _frame(rows, columns, index.take(positions))
+    if frame is None:
+        return ranked
+    own = frame.iloc[positions]
+    own = own.set_axis(unclashed(list(frame.columns), columns), axis=1)
+    return pd.concat([ranked[["rank"]], own, ranked.drop(columns="rank")], axis=1)
+
+
+def _listed(structures: Any) -> tuple[list[object], pd.Index | None]:
+    """The structures as a list, and their index where they have one."""
+    from rdkit import Chem
+
+    if isinstance(structures, str | Chem.Mol):
+        return [structures], None
+    if hasattr(structures, "columns"):
+        raise TypeError("a frame has several columns: use annotate_frame, or give one of its columns")
+    index = structures.index if hasattr(structures, "index") and hasattr(structures, "iloc") else None
+    return list(structures), index
+
+
+def _structures_of(frame: pd.DataFrame, smiles_column: str) -> list[object]:
+    try:
+        place = structure_column(list(frame.columns), smiles_column)
+    except ValueError as error:
+        raise ValueError(f"the frame has {error}") from None
+    return frame.iloc[:, place].tolist()
+
+
+def _beside(frame: pd.DataFrame, records: Sequence[Record], columns: Sequence[Column]) -> pd.DataFrame:
+    import pandas as pd
+
+    own = frame.set_axis(unclashed(list(frame.columns), columns), axis=1)
+    return pd.concat([own, _frame(records, columns, frame.index)], axis=1)
+
+
+def _frame(rows: Sequence[Record], columns: Sequence[Column], index: pd.Index | None) -> pd.DataFrame:
+    """Records as a frame whose types follow from the schema, whatever the values are."""
+    import pandas as pd
+
+    if index is None:
+        index = pd.RangeIndex(len(rows))
+    by_column = list(zip(*rows, strict=True)) if rows else [()] * len(columns)
+    return pd.DataFrame(
+        {
+            column.name: pd.Series(list(values), index=index, dtype=PANDAS_TYPES[column.kind])
+            for column, values in zip(columns, by_column, strict=True)
+        },
+        index=index,
+    )

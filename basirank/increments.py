@@ -1,0 +1,331 @@
+"""Increments: the intrinsic constant of a site as parent value plus itemised terms.
+
+A linear free-energy relationship for each class: parent value, Taft terms along saturated chains, Hammett terms
+around aromatic rings, inductive and resonance terms of groups bound directly, and structural terms (ring size,
+branching, fusion). A row of `coefficients.csv` names the class or family, the anchors, the term and its reaction
+constant; which descriptor a term means is defined here, once.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from functools import cache
+
+from .graph import Graph
+from .sites import Site, SiteClass
+from .substituents import ChainHit, RingHit, Substituents, chain_walk, ring_walk
+from .tables import read_model_table, read_table
+
+
+@dataclass(frozen=True, slots=True)
+class Term:
+    """One increment of an intrinsic constant: coefficient times descriptor, tied to atoms.
+
+    Attributes
+    ----------
+    name : str
+        What the term is, e.g. "sigma* of hydroxy, 2 bonds out".
+    atoms : tuple of int
+        Parent atoms it comes from.
+    descriptor, coefficient : float
+        Their product is the increment [pK units].
+    source : str
+        Source of the coefficient.
+    key : tuple of (str, str, str)
+        Row of the coefficient table: owner, anchors, term.
+    """
+
+    name: str
+    atoms: tuple[int, ...]
+    descriptor: float
+    coefficient: float
+    source: str
+    key: tuple[str, str, str] = ("", "", "")
+
+    @property
+    def value(self) -> float:
+        """Contribution to the intrinsic constant [pK units]."""
+        return self.descriptor * self.coefficient
+
+
+@dataclass(frozen=True, slots=True)
+class Estimate:
+    """Intrinsic constant of one site, every other site neutral, with its itemised terms."""
+
+    site: Site
+    terms: tuple[Term, ...]
+    half_width: float
+
+    @property
+    def value(self) -> float:
+        """Intrinsic pKaH (base) or pKa (acid) [-]."""
+        return sum(term.value for term in self.terms)
+
+
+@dataclass(frozen=True, slots=True)
+class Coefficient:
+    """One reaction constant or structural increment, prior and (where data refined it) posterior."""
+
+    owner: str
+    anchors: str
+    term: str
+    value: float
+    prior: float
+    sd: float
+    source: str
+
+    @property
+    def key(self) -> tuple[str, str, str]:
+        """Identity of the row: owner, anchors, term."""
+        return (self.owner, self.anchors, self.term)
+
+
+Descriptor = tuple[str, tuple[int, ...], float]
+
+
+class SiteWalks:
+    """Walks from the anchors of one site, made on demand and shared by its terms."""
+
+    __slots__ = ("substituents", "graph", "core", "_chain", "_ring")
+
+    def __init__(self, substituents: Substituents, site: Site) -> None:
+        self.substituents = substituents
+        self.graph: Graph = substituents.graph
+        self.core = frozenset(site.core)
+        self._chain: dict[int, list[ChainHit]] = {}
+        self._ring: dict[int, list[RingHit]] = {}
+
+    def chain(self, anchor: int) -> list[ChainHit]:
+        """Groups met along chains from the anchor."""
+        hits = self._chain.get(anchor)
+        if hits is None:
+            hits = self._chain[anchor] = list(chain_walk(self.substituents, anchor, self.core))
+        return hits
+
+    def ring(self, anchor: int) -> list[RingHit]:
+        """What the aromatic system carries, seen from the anchor."""
+        hits = self._ring.get(anchor)
+        if hits is None:
+            found = list(ring_walk(self.substituents, anchor, self.core)) if self.graph.aromatic[anchor] else []
+            hits = self._ring[anchor] = found
+        return hits
+
+    def direct(self, anchor: int) -> list[tuple[int, int]]:
+        """Atoms bound to the anchor outside the unit, aromatic bonds apart."""
+        return [(o, order) for o, order in self.graph.neighbours[anchor] if order != 4 and o not in self.core]
+
+
+def _sigma_star(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+    for hit in walks.chain(anchor):
+        yield f"sigma* of {hit.group.name}, {hit.distance} out", hit.atoms, hit.sigma_star
+
+
+def _alkyl(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+    for other, _ in walks.direct(anchor):
+        if walks.graph.kind[other] == "C3":
+            yield "alkyl group", (other,), 1.0
+
+
+def _aryl(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+    for other, _ in walks.direct(anchor):
+        if walks.graph.aromatic[other]:
+            yield "aryl group", (other,), 1.0
+
+
+def _branch(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+    """Carbon atoms on the alpha carbons beyond the first of each."""
+    graph = walks.graph
+    for other, _ in walks.direct(anchor):
+        if graph.kind[other] == "C3":
+            carbons = [a for a, _ in graph.neighbours[other] if a != anchor and graph.kind[a] == "C3"]
+            if len(carbons) > 1:
+                yield "branched alpha carbon", (other,), float(len(carbons) - 1)
+
+
+def _methyl(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+    for other, _ in walks.direct(anchor):
+        if walks.graph.kind[other] == "C3" and walks.graph.hydrogens[other] == 3:
+            yield "methyl on the site", (other,), 1.0
+
+
+def _hydrogens(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+    if walks.graph.hydrogens[anchor]:
+        yield "hydrogen on the site", (anchor,), float(walks.graph.hydrogens[anchor])
+
+
+def _ring_size(size: int) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
+    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+        found = walks.graph.smallest_ring(anchor)
+        if found == size or (size == 8 and found > 8):
+            yield f"in a ring of {found}", (anchor,), 1.0
+
+    return descriptor
+
+
+def _bicyclic(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+    rings = len(walks.graph.atom_rings[anchor])
+    if rings > 1:
+        yield "shared by rings", (anchor,), float(rings - 1)
+
+
+def _direct(constant: str, label: str) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
+    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+        for other, order in walks.direct(anchor):
+            group = walks.substituents.group(other, anchor, order)
+            yield f"{label} of {group.name}", (other,), getattr(group, constant)
+
+    return descriptor
+
+
+def _hammett(para: str) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
+    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+        for hit in walks.ring(anchor):
+            if hit.group is None or hit.position == "ortho":
+                continue
+            label = hit.position if hit.position != "far" else f"{hit.distance} bonds round"
+            if hit.alternant:
+                sign = "sigma-" if para == "sigma_minus" else "sigma_p"
+                yield f"{sign} of {hit.group.name} ({label})", hit.atoms, getattr(hit, para)
+            else:
+                yield f"sigma_m of {hit.group.name} ({label})", hit.atoms, hit.sigma_meta
+
+    return descriptor
+
+
+def _ortho(constant: str, label: str) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
+    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+        for hit in walks.ring(anchor):
+            if hit.group is not None and hit.position == "ortho":
+                value = getattr(hit.group, constant) if constant else 1.0
+                yield f"{label} of {hit.group.name} (ortho)", hit.atoms, value
+
+    return descriptor
+
+
+def _feature(feature: str, *positions: str) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
+    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+        for hit in walks.ring(anchor):
+            if hit.feature == feature and hit.position in positions:
+                place = hit.position if hit.position != "far" else f"{hit.distance} bonds round"
+                yield f"{feature} ({place})", hit.atoms, hit.fade
+
+    return descriptor
+
+
+def _feature_terms() -> dict[str, Callable[[SiteWalks, int], Iterator[Descriptor]]]:
+    features = {
+        "aza": "aza",
+        "pyrrolic": "pyrrole-type nitrogen",
+        "chalcogen": "chalcogen",
+        "oxo": "oxo",
+        "thioxo": "thioxo",
+        "fusion": "fusion",
+        "azinium": "azinium",
+    }
+    return {
+        f"{short}_{position}": _feature(name, position)
+        for short, name in features.items()
+        for position in ("ortho", "meta", "para", "far")
+    }
+
+
+TERMS: dict[str, Callable[[SiteWalks, int], Iterator[Descriptor]]] = {
+    "sigma_star": _sigma_star,
+    "alkyl": _alkyl,
+    "aryl": _aryl,
+    "branch": _branch,
+    "methyl": _methyl,
+    "hydrogens": _hydrogens,
+    "bicyclic": _bicyclic,
+    **{f"ring{size}": _ring_size(size) for size in range(3, 9)},
+    "sigma_i": _direct("sigma_i", "sigma_I"),
+    "sigma_r": _direct("sigma_r", "sigma_R"),
+    "steric": _direct("steric", "bulk"),
+    "hammett": _hammett("sigma_para"),
+    "hammett_minus": _hammett("sigma_minus"),
+    "ortho_i": _ortho("sigma_i", "sigma_I"),
+    "ortho_r": _ortho("sigma_r", "sigma_R"),
+    "ortho_n": _ortho("", "place"),
+    **_feature_terms(),
+}
+"""Every term that a row of `coefficients.csv` may name, with the descriptor it stands for."""
+
+
+@cache
+def coefficients() -> dict[str, tuple[Coefficient, ...]]:
+    """Coefficients by owner (class or family): published or remembered priors, refined values where there are any."""
+    refined = {(row["owner"], row["anchors"], row["term"]): row for row in read_model_table("coefficients.csv")}
+    by_owner: dict[str, list[Coefficient]] = {}
+    for row in read_table("coefficients.csv"):
+        if row["term"] not in TERMS:
+            raise ValueError(f"coefficients.csv: unknown term {row['term']!r} of {row['owner']!r}")
+        key = (row["owner"], row["anchors"], row["term"])
+        prior = float(row["coefficient"])
+        value, source = prior, row["source"]
+        if key in refined:
+            value = float(refined[key]["value"])
+            source = f"refined on measured rows from {prior:g}: {source}"
+        coefficient = Coefficient(*key, value, prior, float(row["sd"]), source)
+        by_owner.setdefault(row["owner"], []).append(coefficient)
+    return {owner: tuple(rows) for owner, rows in by_owner.items()}
+
+
+@dataclass(frozen=True, slots=True)
+class Line:
+    """The linear free-energy relationship of one class: parent value and coefficients, ready to use."""
+
+    parent: float
+    parent_source: str
+    steps: tuple[tuple[tuple[int, ...], Callable[[SiteWalks, int], Iterator[Descriptor]], Coefficient], ...]
+
+
+@cache
+def _line(name: str, family: str, prior: float, source: str) -> Line:
+    table = coefficients()
+    refined = {row["owner"]: row for row in read_model_table("coefficients.csv") if row["term"] == "parent"}
+    parent = prior
+    if name in refined:
+        parent = float(refined[name]["value"])
+        source = f"refined on measured rows from {prior:g}: {source}"
+    own = table.get(name, ())
+    taken = {(c.anchors, c.term) for c in own}
+    rows = own + tuple(c for c in table.get(family, ()) if (c.anchors, c.term) not in taken)
+    steps = tuple((tuple(int(a) for a in row.anchors.split()), TERMS[row.term], row) for row in rows)
+    return Line(parent, source, steps)
+
+
+def line_of(row: SiteClass) -> Line:
+    """Line of a class: its own coefficients, then those of its family."""
+    return _line(row.name, row.family, row.parent, row.source)
+
+
+def site_terms(substituents: Substituents, site: Site) -> tuple[Term, ...]:
+    """Itemised intrinsic constant of a site.
+
+    Parameters
+    ----------
+    substituents : Substituents
+        Groups of the molecule.
+    site : Site
+        The site, with its anchors.
+
+    Returns
+    -------
+    tuple of Term
+        Parent first; terms that come to nothing are left out. Their values sum to the intrinsic constant.
+    """
+    line = line_of(site.row)
+    walks = SiteWalks(substituents, site)
+    terms = [
+        Term(f"parent: {site.site_class}", site.core, 1.0, line.parent, line.parent_source, (site.site_class, "", "parent"))
+    ]
+    for roles, describe, coefficient in line.steps:
+        for role, anchor in site.anchors:
+            if role in roles:
+                for name, atoms, descriptor in describe(walks, anchor):
+                    if descriptor:
+                        terms.append(
+                            Term(name, atoms, descriptor, coefficient.value, coefficient.source, coefficient.key)
+                        )
+    return tuple(terms)

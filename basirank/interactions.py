@@ -1,0 +1,216 @@
+"""Interactions: how much the charge of one site moves the constant of another, and which pairs are one tautomer.
+
+The same W lowers the second constant of a diamine, raises the amine of an amino acid and lowers its acid. It falls
+with the number of bonds between the sites, more slowly along a conjugated path, and grows with parallel paths.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cache
+
+import numpy as np
+from numpy.typing import NDArray
+
+from .graph import Graph
+from .sites import Site
+from .tables import read_model_table, read_toml
+
+_ACCEPTORS = frozenset({"n", "N2", "O2", "S2"})
+"""Kinds of base that take a proton without giving up conjugation: with an acid N-H, O-H or S-H they are tautomers."""
+
+_SHIFTING = frozenset({"azinone_nh", "azole_nh", "phenol", "thiol", "enol", "nh_acid", "sulfonamide_acid"})
+"""Families of acids whose anion shares its charge with a ring or a double bond, so that the proton can move there."""
+
+_LONGEST_SHIFT = 4
+"""Bonds over which such a shift is one tautomeric unit (para or 1,5); farther apart it is a zwitterion of its own."""
+
+
+@dataclass(frozen=True, slots=True)
+class Law:
+    """Parameters of the interaction law.
+
+    Attributes
+    ----------
+    saturated, conjugated : ndarray, shape (n,)
+        W by number of bonds, from one bond up [pK units].
+    beyond : float
+        Scale of W past n bonds [pK units].
+    parallel_paths : float
+        Share that each further shortest path adds [-].
+    acid_share : float
+        Factor for each acid whose anion is shared by its oxygens [-].
+    """
+
+    saturated: NDArray[np.float64]
+    conjugated: NDArray[np.float64]
+    beyond: float
+    parallel_paths: float
+    acid_share: float
+
+
+@cache
+def prior_law() -> Law:
+    """The law as `interactions.toml` has it, before any refinement."""
+    table = read_toml("interactions.toml")
+    return Law(
+        np.array(table["saturated"]["values"]),
+        np.array(table["conjugated"]["values"]),
+        table["beyond"]["value"],
+        table["parallel_paths"]["value"],
+        table["delocalised_acid"]["value"],
+    )
+
+
+@cache
+def law() -> Law:
+    """The law in use: the prior, with refined values where `models/interactions.csv` has them."""
+    prior = prior_law()
+    refined = {(row["path"], int(row["bonds"])): float(row["value"]) for row in read_model_table("interactions.csv")}
+
+    def updated(path: str, values: NDArray[np.float64]) -> NDArray[np.float64]:
+        return np.array([refined.get((path, bonds), value) for bonds, value in enumerate(values.tolist(), 1)])
+
+    return Law(
+        updated("saturated", prior.saturated),
+        updated("conjugated", prior.conjugated),
+        prior.beyond,
+        refined.get(("parallel", 0), prior.parallel_paths),
+        refined.get(("acid share", 0), prior.acid_share),
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class Paths:
+    """Shortest paths between all pairs of n sites.
+
+    Attributes
+    ----------
+    bonds, conjugated, count : ndarray of int, shape (n, n)
+        Bonds on a shortest path (0: the same atom), how many of them are conjugated, number of shortest paths.
+    acids : ndarray of int, shape (n, n)
+        Number of sites of the pair whose anion is shared by its oxygens.
+    """
+
+    bonds: NDArray[np.int64]
+    conjugated: NDArray[np.int64]
+    count: NDArray[np.int64]
+    acids: NDArray[np.int64]
+
+
+def coupling_matrix(paths: Paths, rule: Law) -> NDArray[np.float64]:
+    """Interactions of all pairs of sites under a law.
+
+    Parameters
+    ----------
+    paths : Paths
+        Shortest paths between n sites (arrays of shape (m, n, n) give the couplings of m molecules).
+    rule : Law
+        Parameters.
+
+    Returns
+    -------
+    ndarray, shape (n, n) or (m, n, n)
+        W [pK units], symmetric, zero diagonal.
+
+    Examples
+    --------
+    >>> one = np.array([[0, 3], [3, 0]])
+    >>> none = np.zeros((2, 2), dtype=int)
+    >>> coupling_matrix(Paths(one, none, none + 1, none), prior_law())[0, 1]  # 1,2-diaminoethane
+    2.5
+    """
+    listed = len(rule.saturated)
+    index = np.clip(paths.bonds, 1, listed) - 1
+    share = paths.conjugated / np.maximum(paths.bonds, 1)
+    single = rule.saturated[index] ** (1.0 - share) * rule.conjugated[index] ** share
+    near = single * (1.0 + rule.parallel_paths * (1.0 - share) * (paths.count - 1))
+    far = rule.beyond * (listed / np.maximum(paths.bonds, 1)) ** 2
+    coupling = np.where(paths.bonds > listed, far, near) * rule.acid_share**paths.acids
+    return coupling * (1.0 - np.eye(paths.bonds.shape[-1]))
+
+
+@cache
+def _families(section: str) -> frozenset[str]:
+    return frozenset(read_toml("interactions.toml")[section]["families"])
+
+
+def _centre(site: Site) -> int:
+    """Atom that stands for the charge of a site."""
+    if site.row.family in _families("unit_centre"):
+        return next((atom for role, atom in site.anchors if role == 2), site.atom)
+    return site.atom
+
+
+def _paths_from(graph: Graph, start: int) -> tuple[dict[int, int], dict[int, int], dict[int, int]]:
+    """Shortest distance, number of shortest paths and most conjugated bonds on one, for every atom."""
+    distance, count, conjugated = {start: 0}, {start: 1}, {start: 0}
+    edge = [start]
+    kind = graph.kind
+    while edge:
+        following: list[int] = []
+        for inner in edge:
+            saturated = kind[inner] == "C3"
+            for other, _ in graph.neighbours[inner]:
+                step = 0 if saturated or kind[other] == "C3" else 1
+                if other not in distance:
+                    distance[other] = distance[inner] + 1
+                    count[other] = count[inner]
+                    conjugated[other] = conjugated[inner] + step
+                    following.append(other)
+                elif distance[other] == distance[inner] + 1:
+                    count[other] += count[inner]
+                    conjugated[other] = max(conjugated[other], conjugated[inner] + step)
+        edge = following
+    return distance, count, conjugated
+
+
+def find_paths(graph: Graph, sites: Sequence[Site]) -> tuple[Paths, NDArray[np.bool_] | None]:
+    """Paths between all pairs of sites, and the pairs that are one tautomeric unit.
+
+    A base and an acid are one unit when moving the acid's proton to the base gives a neutral tautomer: an acceptor
+    (:n, =N, =O, =S) and an N-H, O-H or S-H two or four conjugated bonds apart (imidazole, pyridone, amidine), or an
+    acid atom that belongs to the base's own unit. Their doubly charged state is then the neutral form again and isn't
+    counted a second time.
+
+    Parameters
+    ----------
+    graph : Graph
+        Plain arrays of the molecule.
+    sites : sequence of Site
+        Its n sites.
+
+    Returns
+    -------
+    paths : Paths
+        Shortest paths.
+    exclusive : ndarray of bool, shape (n, n), or None
+        Tautomeric pairs; None when there is none.
+    """
+    n = len(sites)
+    bonds = np.zeros((n, n), dtype=np.int64)
+    conjugated, acids = bonds.copy(), bonds.copy()
+    count = np.ones((n, n), dtype=np.int64)
+    exclusive = np.zeros((n, n), dtype=bool)
+    centres = [_centre(site) for site in sites]
+    oxygens = [site.row.family in _families("delocalised_acid") for site in sites]
+    for i in range(n - 1):
+        distance, number, along = _paths_from(graph, centres[i])
+        for j in range(i + 1, n):
+            other = centres[j]
+            bonds[i, j] = bonds[j, i] = distance[other]
+            conjugated[i, j] = conjugated[j, i] = along[other]
+            count[i, j] = count[j, i] = number[other]
+            acids[i, j] = acids[j, i] = oxygens[i] + oxygens[j]
+            if sites[i].kind != sites[j].kind:
+                base, acid = (sites[i], sites[j]) if sites[i].kind == "base" else (sites[j], sites[i])
+                shift = (
+                    0 < distance[other] <= _LONGEST_SHIFT
+                    and distance[other] % 2 == 0
+                    and along[other] == distance[other]
+                    and graph.kind[base.atom] in _ACCEPTORS
+                    and acid.row.family in _SHIFTING
+                )
+                exclusive[i, j] = exclusive[j, i] = shift or acid.atom in base.core
+    return Paths(bonds, conjugated, count, acids), exclusive if exclusive.any() else None

@@ -1,0 +1,1 @@
+"""Measured and check values, and the demo list (package data)."""

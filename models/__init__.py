@@ -1,0 +1,1 @@
+"""Fitted values: refined coefficients and the spread of each class (package data)."""
