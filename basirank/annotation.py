@@ -27,9 +27,7 @@ from .records import (
 if TYPE_CHECKING:
     import pandas as pd
 
-CHUNK = (
-    250  # structures that go through the stages together; a thousand cost a tenth more, in garbage collection
-)
+CHUNK = 250  # structures that go through the stages together; a thousand cost more in garbage collection
 
 
 def records_of(structures: Sequence[object], ph: Sequence[float]) -> list[Record]:

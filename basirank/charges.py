@@ -1,15 +1,23 @@
 """From the charge state that was drawn to the neutral parent.
 
-Cations with hydrogen lose it, anions gain it; a charge that no proton can quench (quaternary nitrogen, N-oxide, nitro)
-stays. A fixed cation in conjugation with an N-H, O-H, S-H or an anion is quenched through the conjugated system: an
-N-alkyl-aminoazinium becomes the imine, an N-alkyl-hydroxyazinium the pyridone.
+Cations with hydrogen lose it, anions gain it; a charge that no proton can quench (quaternary nitrogen,
+N-oxide, nitro) stays. A fixed cation in conjugation with an N-H, O-H, S-H or an anion is quenched through the
+conjugated system: an N-alkyl-aminoazinium becomes the imine, an N-alkyl-hydroxyazinium the pyridone.
 """
 
 from functools import cache
 
 from rdkit import Chem
 
-from basirank.conjugation import alternating_path, apply_edit, finish, flip, kekulised, release_hydrogens, skeleton_ranks
+from basirank.conjugation import (
+    alternating_path,
+    apply_edit,
+    finish,
+    flip,
+    kekulised,
+    release_hydrogens,
+    skeleton_ranks,
+)
 from basirank.tables import read_table
 
 # Elements whose cation with hydrogen gives it up, and whose anion takes one up.
@@ -66,7 +74,10 @@ def _all_paired(charged: list[Chem.Atom]) -> bool:
                 return False
             if atom.GetIsAromatic() and any(_may_be_rewritten(n) for n in atom.GetNeighbors()):
                 return False
-            if any(n.GetAtomicNum() == 8 and n.GetDegree() == 1 and n.GetTotalNumHs() for n in atom.GetNeighbors()):
+            if any(
+                n.GetAtomicNum() == 8 and n.GetDegree() == 1 and n.GetTotalNumHs()
+                for n in atom.GetNeighbors()
+            ):
                 return False
         elif atom.GetAtomicNum() == 8 and charge == -1:
             partner = atom.GetNeighbors()
@@ -83,7 +94,9 @@ def _may_be_rewritten(atom: Chem.Atom) -> bool:
 
 
 def _exchange_protons(mol: Chem.RWMol) -> None:
-    """Take hydrogen off cations and put it on anions, in place; anions held by a neighbouring fixed cation stay."""
+    """Take hydrogen off cations and put it on anions, in place; anions held by a neighbouring fixed cation
+    stay.
+    """
     atoms = _charged_atoms(mol)
     for atom in atoms:
         if atom.GetFormalCharge() > 0 and atom.GetAtomicNum() in _PROTON_CARRIERS - {6}:
@@ -94,9 +107,12 @@ def _exchange_protons(mol: Chem.RWMol) -> None:
                 _add_hydrogens(atom, -min(atom.GetFormalCharge(), hydrogens))
     held = _held_anions(atoms)
     for atom in atoms:
-        if atom.GetFormalCharge() < 0 and atom.GetIdx() not in held and atom.GetAtomicNum() in _PROTON_CARRIERS:
-            if not _is_complex_anion(atom):
-                _add_hydrogens(atom, -atom.GetFormalCharge())
+        if (
+            atom.GetFormalCharge() < 0
+            and atom.GetIdx() not in held
+            and atom.GetAtomicNum() in _PROTON_CARRIERS
+        ) and not _is_complex_anion(atom):
+            _add_hydrogens(atom, -atom.GetFormalCharge())
     finish(mol)
 
 
@@ -112,7 +128,7 @@ def _add_hydrogens(atom: Chem.Atom, number: int) -> None:
 
 
 def _held_anions(atoms: list[Chem.Atom]) -> set[int]:
-    """Anions that a cation without hydrogen holds: beside it, or one atom further in azide and diazo groups."""
+    """Anions held by a neighbouring cation without hydrogen, one for each of its charges."""
     held: set[int] = set()
     for atom in atoms:
         if atom.GetFormalCharge() > 0:
@@ -169,8 +185,22 @@ def _quench_one(mol: Chem.RWMol, cation: int, ranks: list[int]) -> Chem.RWMol | 
     return None
 
 
+def _is_enolic(atom: Chem.Atom) -> bool:
+    """Whether an atom is an unsaturated carbon other than a carbonyl carbon."""
+    return (
+        atom.GetAtomicNum() == 6
+        and atom.GetTotalDegree() == 3
+        and not any(
+            bond.GetBondType() == Chem.BondType.DOUBLE and bond.GetOtherAtom(atom).GetAtomicNum() == 8
+            for bond in atom.GetBonds()
+        )
+    )
+
+
 def _donors(mol: Chem.Mol, ranks: list[int]) -> list[int]:
-    """Atoms that can quench a cation: anions first, then O-H and S-H, then N-H, most acidic (least hydrogens) first."""
+    """Atoms that can quench a cation: anions first, then O-H and S-H, then N-H, most acidic (least hydrogens)
+    first.
+    """
     found = []
     for atom in mol.GetAtoms():
         element, charge = atom.GetAtomicNum(), atom.GetFormalCharge()
@@ -181,8 +211,8 @@ def _donors(mol: Chem.Mol, ranks: list[int]) -> list[int]:
             continue
         if charge == 0 and not hydrogens:
             continue
-        if element != 7 and any(n.GetAtomicNum() == 7 for n in atom.GetNeighbors()):
-            continue  # an oxime keeps its hydrogen (pralidoxime)
+        if element != 7 and not all(_is_enolic(n) for n in atom.GetNeighbors()):
+            continue  # an oxime keeps its hydrogen (pralidoxime); acids and alcohols aren't conjugated
         found.append((charge, element == 7, hydrogens, ranks[atom.GetIdx()], atom.GetIdx()))
     return [entry[-1] for entry in sorted(found)]
 
@@ -203,7 +233,9 @@ def _apply_rows(mol: Chem.RWMol, index: list[int]) -> tuple[Chem.RWMol, list[int
             if not match:
                 break
             place = {
-                atom.GetAtomMapNum(): match[atom.GetIdx()] for atom in pattern.GetAtoms() if atom.GetAtomMapNum()
+                atom.GetAtomMapNum(): match[atom.GetIdx()]
+                for atom in pattern.GetAtoms()
+                if atom.GetAtomMapNum()
             }
             try:
                 edited = kekulised(mol)

@@ -14,6 +14,7 @@ import sys
 import time
 from collections import Counter
 from collections.abc import Callable, Iterable, Iterator, Sequence
+from contextlib import contextmanager
 from itertools import chain, islice
 from typing import Any, TypeVar
 
@@ -297,8 +298,22 @@ def _quiet_rdkit() -> None:
 def _records(batch: Sequence[Row], ph: tuple[float, ...]) -> list[Record]:
     from .annotation import records_of
 
-    computed = iter(records_of([row.structure for row in batch if row.problem is None], ph))
+    with _interrupt_held():
+        computed = iter(records_of([row.structure for row in batch if row.problem is None], ph))
     return [next(computed) if row.problem is None else refused_record(row.problem, ph) for row in batch]
+
+
+@contextmanager
+def _interrupt_held() -> Iterator[None]:
+    """Let an interrupt wait for the end of a batch: RDKit's substructure search may swallow it."""
+    if not hasattr(signal, "pthread_sigmask"):
+        yield
+        return
+    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, before)
 
 
 def _batches(rows: Iterable[Row], size: int) -> Iterator[list[Row]]:

@@ -1,15 +1,18 @@
 """Moving a hydrogen or a charge through a conjugated system.
 
-In a Kekule structure a proton that leaves one end of a conjugated system and arrives at the other shifts every double
-bond of an alternating path between them, and nothing else. All tautomer and charge rewrites rest on this one move.
+In a Kekule structure a proton that leaves one end of a conjugated system and arrives at the other shifts
+every double bond of an alternating path between them, and nothing else. All tautomer and charge rewrites rest
+on this one move.
 """
 
+import itertools
 import re
 from collections.abc import Sequence
 
 from rdkit import Chem
 
-# Longest path that is looked for, and the number of steps after which a search is given up (large fused dyes).
+# Longest path that is looked for, and the number of steps after which a search is given up (large fused
+# dyes).
 MAX_PATH_BONDS = 24
 MAX_SEARCH_STEPS = 20_000
 
@@ -39,7 +42,8 @@ def alternating_path(mol: Chem.Mol, start: int, ends: set[int], *, first: Chem.B
     ends : set of int
         Atoms it may reach, through a bond of the other order than `first`.
     first : BondType
-        Order of the first bond: SINGLE from an atom that gives a hydrogen, DOUBLE from a cation that is quenched.
+        Order of the first bond: SINGLE from an atom that gives a hydrogen, DOUBLE from a cation that is
+        quenched.
 
     Returns
     -------
@@ -83,8 +87,8 @@ def alternating_path(mol: Chem.Mol, start: int, ends: set[int], *, first: Chem.B
 
 
 def flip(mol: Chem.RWMol, path: Sequence[int]) -> None:
-    """Exchange single and double bonds along a path, in place; marks of double-bond stereo on it are dropped."""
-    for a, b in zip(path, path[1:], strict=False):
+    """Exchange single and double bonds along a path, in place; E/Z marks on it are dropped."""
+    for a, b in itertools.pairwise(path):
         bond = mol.GetBondBetweenAtoms(a, b)
         bond.SetBondType(_DOUBLE if bond.GetBondType() == _SINGLE else _SINGLE)
         drop_bond_stereo(bond)
@@ -93,9 +97,16 @@ def flip(mol: Chem.RWMol, path: Sequence[int]) -> None:
 
 
 def drop_bond_stereo(bond: Chem.Bond) -> None:
-    """Forget E/Z of a bond, in place."""
+    """Forget E/Z of a bond, in place, with the slashes beside it that belong to no other double bond."""
     bond.SetStereo(Chem.BondStereo.STEREONONE)
     bond.SetBondDir(Chem.BondDir.NONE)
+    for end in (bond.GetBeginAtom(), bond.GetEndAtom()):
+        for beside in end.GetBonds():
+            if beside.GetBondDir() == Chem.BondDir.NONE or beside.GetIdx() == bond.GetIdx():
+                continue
+            others = beside.GetOtherAtom(end).GetBonds()
+            if not any(other.GetBondType() == _DOUBLE for other in others):
+                beside.SetBondDir(Chem.BondDir.NONE)
 
 
 def release_hydrogens(atom: Chem.Atom) -> None:
@@ -111,7 +122,9 @@ def finish(mol: Chem.RWMol) -> None:
 
 
 def move_hydrogen(mol: Chem.Mol, donor: int, acceptor: int) -> Chem.RWMol | None:
-    """Molecule with one hydrogen moved from `donor` to `acceptor`, or None where no Kekule structure allows it."""
+    """Molecule with one hydrogen moved from `donor` to `acceptor`, or None where no Kekule structure allows
+    it.
+    """
     atom = mol.GetAtomWithIdx(donor)
     if not atom.GetNumExplicitHs() + atom.GetNumImplicitHs():
         return None  # the hydrogen is an isotope that is written as an atom
@@ -128,7 +141,8 @@ def move_hydrogen(mol: Chem.Mol, donor: int, acceptor: int) -> Chem.RWMol | None
 
 
 def skeleton_ranks(mol: Chem.Mol) -> list[int]:
-    """Rank of each atom in the bare skeleton (elements, isotopes, charges, connections), equal for equivalent atoms.
+    """Rank of each atom in the bare skeleton (elements, isotopes, charges, connections), equal for equivalent
+    atoms.
 
     Hydrogen counts, bond orders and aromaticity don't enter: all tautomers of a compound give the same ranks,
     whatever the order of atoms.

@@ -51,11 +51,24 @@ class Term:
 
 @dataclass(frozen=True, slots=True)
 class Estimate:
-    """Intrinsic constant of one site, every other site neutral, with its itemised terms."""
+    """Intrinsic constant of one site, every other site neutral, with its itemised terms.
+
+    Attributes
+    ----------
+    site : Site
+        The site.
+    terms : tuple of Term
+        Parent, increments and correction; they sum to the value.
+    half_width : float
+        Half of the 90 % interval [pK units].
+    support : {"supported", "extrapolated"}
+        Whether measured neighbours stand behind the value.
+    """
 
     site: Site
     terms: tuple[Term, ...]
     half_width: float
+    support: str = "extrapolated"
 
     @property
     def value(self) -> float:
@@ -203,12 +216,12 @@ def _ortho(constant: str, label: str) -> Callable[[SiteWalks, int], Iterator[Des
     return descriptor
 
 
-def _feature(feature: str, *positions: str) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
+def _feature(feature: str, position: str, distance: int = 0) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
     def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
         for hit in walks.ring(anchor):
-            if hit.feature == feature and hit.position in positions:
-                place = hit.position if hit.position != "far" else f"{hit.distance} bonds round"
-                yield f"{feature} ({place})", hit.atoms, hit.fade
+            if hit.feature == feature and hit.position == position and distance in (0, hit.distance):
+                place = position if position != "far" else f"fused ring, {hit.distance} bonds away"
+                yield f"{feature} ({place})", hit.atoms, 1.0 if distance else hit.fade
 
     return descriptor
 
@@ -223,11 +236,14 @@ def _feature_terms() -> dict[str, Callable[[SiteWalks, int], Iterator[Descriptor
         "fusion": "fusion",
         "azinium": "azinium",
     }
-    return {
+    terms = {
         f"{short}_{position}": _feature(name, position)
         for short, name in features.items()
         for position in ("ortho", "meta", "para", "far")
     }
+    for short in ("aza", "pyrrolic"):
+        terms |= {f"{short}_far{away}": _feature(features[short], "far", away) for away in range(2, 7)}
+    return terms
 
 
 TERMS: dict[str, Callable[[SiteWalks, int], Iterator[Descriptor]]] = {

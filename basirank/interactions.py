@@ -118,7 +118,7 @@ def coupling_matrix(paths: Paths, rule: Law) -> NDArray[np.float64]:
     --------
     >>> one = np.array([[0, 3], [3, 0]])
     >>> none = np.zeros((2, 2), dtype=int)
-    >>> coupling_matrix(Paths(one, none, none + 1, none), prior_law())[0, 1]  # 1,2-diaminoethane
+    >>> float(coupling_matrix(Paths(one, none, none + 1, none), prior_law())[0, 1])  # 1,2-diaminoethane
     2.5
     """
     listed = len(rule.saturated)

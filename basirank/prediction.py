@@ -14,16 +14,19 @@ from rdkit import Chem
 
 from .equilibrium import Equilibrium, SiteSet, equilibrate
 from .forms import form_smiles
-from .graph import build_graph
-from .increments import Estimate, site_terms
-from .interactions import Paths, coupling_matrix, find_paths, law
-from .intervals import half_width
-from .sites import find_sites
+from .graph import Graph, build_graph
+from .increments import Estimate, Term, site_terms
+from .interactions import coupling_matrix, find_paths, law
+from .residual import corrections
+from .sites import Site, find_sites
 from .structures import Parent, Refusal, read_parent
 from .substituents import Substituents
 
 LOWEST, HIGHEST = -5.0, 16.0
 """Constants outside these are not reported."""
+
+CORRECTION = "correction from measured neighbours"
+"""Name of the term that the regression adds to a line."""
 
 _MARGIN = 4.0
 """A site whose intrinsic constant lies further outside can't come back by interaction: it is left out."""
@@ -60,42 +63,90 @@ class Prediction:
     forms: tuple[str, ...]
 
 
-def estimate_sites(parent: Parent) -> tuple[tuple[Estimate, ...], Paths, SiteSet]:
-    """Intrinsic constants of a parent and its sites as the equilibrium needs them.
+@dataclass(frozen=True, slots=True)
+class Lines:
+    """Sites of one parent with their itemised lines, before any correction.
+
+    Attributes
+    ----------
+    graph : Graph
+        Plain arrays of the parent.
+    sites : tuple of Site
+        Sites within reach of the reported range, in canonical order.
+    terms : tuple of tuple of Term
+        Terms of each site's line.
+    """
+
+    graph: Graph
+    sites: tuple[Site, ...]
+    terms: tuple[tuple[Term, ...], ...]
+
+    @property
+    def values(self) -> list[float]:
+        """Line value of each site [-]."""
+        return [sum(term.value for term in terms) for terms in self.terms]
+
+
+def site_lines(parent: Parent) -> Lines:
+    """Sites of a parent and what the linear free-energy lines say of each.
 
     Parameters
     ----------
     parent : Parent
         Neutral parent.
-
-    Returns
-    -------
-    estimates : tuple of Estimate
-        One for each site within reach of the reported range, in canonical order.
-    paths : Paths
-        Shortest paths between the same sites.
-    site_set : SiteSet
-        The same sites with their couplings.
     """
     graph = build_graph(parent.mol)
     substituents = Substituents(graph)
-    estimates = []
+    sites, itemised = [], []
     for site in find_sites(parent.mol, graph, parent.output_order):
-        estimate = Estimate(site, site_terms(substituents, site), half_width(site.row))
-        beyond = estimate.value > HIGHEST + _MARGIN if site.kind == "acid" else estimate.value < LOWEST - _MARGIN
-        if not beyond:
-            estimates.append(estimate)
-    sites = [estimate.site for estimate in estimates]
-    paths, exclusive = find_paths(graph, sites)
-    site_set = SiteSet(
-        kinds=[site.kind for site in sites],
+        terms = site_terms(substituents, site)
+        value = sum(term.value for term in terms)
+        if (value > HIGHEST + _MARGIN) if site.kind == "acid" else (value < LOWEST - _MARGIN):
+            continue
+        sites.append(site)
+        itemised.append(terms)
+    return Lines(graph, tuple(sites), tuple(itemised))
+
+
+def estimates_of(batch: Sequence[Lines]) -> list[tuple[Estimate, ...]]:
+    """Intrinsic constants of many parents: lines plus the correction from measured neighbours, where a model is there.
+
+    Parameters
+    ----------
+    batch : sequence of Lines
+        Lines of each parent.
+
+    Returns
+    -------
+    list of tuple of Estimate
+        Estimates of each parent's sites.
+    """
+    graphs = [lines.graph for lines in batch for _ in lines.sites]
+    sites = [site for lines in batch for site in lines.sites]
+    values = [value for lines in batch for value in lines.values]
+    found = iter(corrections(graphs, sites, values))
+    results = []
+    for lines in batch:
+        estimates = []
+        for site, terms in zip(lines.sites, lines.terms, strict=True):
+            correction = next(found)
+            added = Term(CORRECTION, (), 1.0, correction.value, "regression on measured values, models/README.md")
+            estimates.append(Estimate(site, (*terms, added), correction.half_width, correction.support))
+        results.append(tuple(estimates))
+    return results
+
+
+def site_set(lines: Lines, estimates: Sequence[Estimate]) -> SiteSet:
+    """Sites of one parent as the equilibrium takes them, with their couplings."""
+    paths, exclusive = find_paths(lines.graph, lines.sites)
+    return SiteSet(
+        kinds=[site.kind for site in lines.sites],
         pk=[estimate.value for estimate in estimates],
         half_width=[estimate.half_width for estimate in estimates],
         coupling=coupling_matrix(paths, law()),
         exclusive=exclusive,
-        fixed_charge=sum(graph.charge),
+        fixed_charge=sum(lines.graph.charge),
     )
-    return tuple(estimates), paths, site_set
 
 
 def predict(structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,)) -> list[Prediction]:
@@ -113,27 +164,24 @@ def predict(structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,
     list of Prediction
         In the order of `structures`; a structure that can't be computed is `refused` with its reason.
     """
-    refused: dict[int, str] = {}
-    ready: list[tuple[int, Parent, tuple[Estimate, ...], SiteSet]] = []
+    predictions: dict[int, Prediction] = {}
+    ready: list[tuple[int, Parent, Lines]] = []
     for index, structure in enumerate(structures):
         try:
             parent = read_parent(structure)
         except Refusal as reason:
-            refused[index] = str(reason)
+            predictions[index] = Prediction("refused", str(reason), None, (), None, None, ())
             continue
-        estimates, _, site_set = estimate_sites(parent)
-        ready.append((index, parent, estimates, site_set))
-    equilibria = equilibrate([site_set for *_, site_set in ready], ph)
-    predictions: dict[int, Prediction] = {
-        index: Prediction("refused", reason, None, (), None, None, ()) for index, reason in refused.items()
-    }
-    for (index, parent, estimates, site_set), equilibrium in zip(ready, equilibria, strict=True):
-        predictions[index] = _prediction(parent, estimates, site_set, equilibrium)
+        ready.append((index, parent, site_lines(parent)))
+    estimates = estimates_of([lines for *_, lines in ready])
+    sets = [site_set(lines, found) for (*_, lines), found in zip(ready, estimates, strict=True)]
+    for (index, parent, _), found, sites, equilibrium in zip(ready, estimates, sets, equilibrate(sets, ph), strict=True):
+        predictions[index] = _prediction(parent, found, sites, equilibrium)
     return [predictions[index] for index in range(len(structures))]
 
 
 def _prediction(
-    parent: Parent, estimates: tuple[Estimate, ...], site_set: SiteSet, equilibrium: Equilibrium
+    parent: Parent, estimates: tuple[Estimate, ...], sites_in: SiteSet, equilibrium: Equilibrium
 ) -> Prediction:
     sites = [estimate.site for estimate in estimates]
     basic = any(step.kind == "base" and step.value >= LOWEST for step in equilibrium.steps)
@@ -147,7 +195,7 @@ def _prediction(
         message="; ".join(notes),
         parent=parent,
         estimates=estimates,
-        coupling=np.asarray(site_set.coupling),
+        coupling=np.asarray(sites_in.coupling),
         equilibrium=equilibrium,
         forms=tuple(form_smiles(parent, sites, state.dominant) for state in equilibrium.states),
     )

@@ -246,10 +246,13 @@ def record(prediction: Prediction, ph: Sequence[float]) -> Record:
     parent, equilibrium = prediction.parent, prediction.equilibrium
     if prediction.status == "refused" or parent is None:
         return refused_record(prediction.message or "cannot be computed", ph)
-    row: list[Value] = [prediction.status, prediction.message, parent.smiles]
     steps = equilibrium.steps if equilibrium is not None else ()
     bases = [step for step in steps if step.kind == "base"]
     acids = [step for step in steps if step.kind == "acid"]
+    message = prediction.message
+    if bases and bases[0].value > REPORTED_RANGE[1]:
+        message = "; ".join(filter(None, (message, f"first pKaH above {REPORTED_RANGE[1]:g}, not reported")))
+    row: list[Value] = [prediction.status, message, parent.smiles]
     for n in range(STEPS_SHOWN):
         value = reported(bases[n].value) if n < len(bases) else None
         row += (None, None, None) if value is None else (value, *interval(bases[n]))

@@ -1,7 +1,8 @@
 """Which component of a salt or solvate is the compound.
 
 Listed counter-ions and solvents are set aside; of the rest the largest component with a basic nitrogen is the
-compound. Where everything is listed (lysine hydrochloride, sodium acetate), the listed base is, else the listed acid.
+compound. Where everything is listed (lysine hydrochloride, sodium acetate), the listed base is, else the
+listed acid.
 """
 
 from collections.abc import Sequence
@@ -13,8 +14,8 @@ from rdkit import Chem
 from basirank.charges import neutralise
 from basirank.tables import read_table
 
-# A nitrogen that may take a proton in water: amine, aniline, imine, amidine, azine, azole. Not amide, thioamide,
-# sulfonamide, nitro, nitroso, nitrile, azide, quaternary or pyrrole nitrogen.
+# A nitrogen that may take a proton in water: amine, aniline, imine, amidine, azine, azole. Not amide,
+# thioamide, sulfonamide, nitro, nitroso, nitrile, azide, quaternary or pyrrole nitrogen.
 BASIC_NITROGEN = (
     "[$([NX3;+0;!$(N-[C,S,P]=[O,S]);!$(N-[N+]);!$(N-N=O);!$(N-C#N);!$(N-[C,c]=,:[N,n])]),"
     "$([NX2;+0]=[#6;!$(C=[O,S,N+])]),$([n;X2;+0])]"
@@ -28,7 +29,9 @@ _ALKALI_METALS = frozenset({3, 11, 19, 37, 55})
 
 @dataclass(frozen=True, slots=True)
 class Component:
-    """One connected part of the input: neutral form, input numbers, canonical text without stereo, listed kind."""
+    """One connected part of the input: neutral form, input numbers, canonical text without stereo, listed
+    kind.
+    """
 
     mol: Chem.Mol
     index: list[int]
@@ -59,7 +62,7 @@ def _organic_pattern() -> Chem.Mol:
 
 
 def split_ion_pairs(mol: Chem.Mol) -> Chem.Mol:
-    """Break bonds drawn between an alkali metal and O, N, S or halogen; the same object where there are none."""
+    """Break bonds drawn between an alkali metal and O, N, S or halogen; same object where there are none."""
     pairs = [
         (bond.GetBeginAtomIdx(), bond.GetEndAtomIdx())
         for bond in mol.GetBonds()
@@ -141,7 +144,9 @@ def is_organic(mol: Chem.Mol) -> bool:
     return mol.HasSubstructMatch(_organic_pattern())
 
 
-def choose_component(mol: Chem.Mol, index: Sequence[int]) -> tuple[Chem.Mol, list[int], tuple[str, ...]] | None:
+def choose_component(
+    mol: Chem.Mol, index: Sequence[int]
+) -> tuple[Chem.Mol, list[int], tuple[str, ...]] | None:
     """The component that is the compound.
 
     Parameters
@@ -154,7 +159,8 @@ def choose_component(mol: Chem.Mol, index: Sequence[int]) -> tuple[Chem.Mol, lis
     Returns
     -------
     tuple of Mol, list of int, tuple of str
-        Neutral component, its input numbers, remarks on other compounds left out; None where nothing is organic.
+        Neutral component, its input numbers, remarks on other compounds left out; None where nothing is
+        organic.
     """
     maps: list[list[int]] = []
     parts = Chem.GetMolFrags(mol, asMols=True, fragsMolAtomMapping=maps)

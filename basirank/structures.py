@@ -1,7 +1,8 @@
 """From text or molecule to the parent structure.
 
-The parent is the compound as it stands uncharged in water: counter-ions and solvents off, protons exchanged until
-nothing is charged that needn't be, tautomers in the form that rules. Each atom keeps its number in the input.
+The parent is the compound as it stands uncharged in water: counter-ions and solvents off, protons exchanged
+until nothing is charged that needn't be, tautomers in the form that rules. Each atom keeps its number in the
+input.
 """
 
 import json
@@ -19,8 +20,11 @@ from basirank.tautomers import rewrite, written_features
 
 MAX_TEXT_LENGTH = 50_000
 MAX_HEAVY_ATOMS = 1_000
+# Metals whose compounds with a carbanion are still taken for salts: groups 1 and 2.
+_IONIC_METALS = frozenset({3, 4, 11, 12, 19, 20, 37, 38, 55, 56})
 
-# A bracket atom other than a stereo carbon and pyrrole N-H: its element, charge, radical or isotope must be looked at.
+# A bracket atom other than a stereo carbon and pyrrole N-H: its element, charge, radical or isotope must be
+# looked at.
 _UNUSUAL_ATOM = re.compile(r"\[(?!C@@?H?\]|nH\])|\*")
 _CARBON_OR_NITROGEN = re.compile(r"[Nnc]|C(?!l)")
 _DUMMY = rdqueries.AtomNumEqualsQueryAtom(0)
@@ -39,9 +43,11 @@ class Parent:
     Attributes
     ----------
     mol : Mol
-        Sanitised parent; ordinary hydrogen implicit, isotopic hydrogen may remain as atoms; not to be changed.
+        Sanitised parent; ordinary hydrogen implicit, isotopic hydrogen may remain as atoms; not to be
+        changed.
     atom_index : tuple of int
-        Number of each parent atom among all atoms written in the input ([H] and counter-ions counted), from 0.
+        Number of each parent atom among all atoms written in the input ([H] and counter-ions counted), from
+        0.
     smiles : str
         Canonical SMILES of `mol`.
     output_order : tuple of int
@@ -134,7 +140,9 @@ def _from_mol(mol: Chem.Mol) -> Parent:
     return _finished(parsed, index, None, charged=True, plain=False)
 
 
-def _finished(mol: Chem.Mol, index: list[int] | None, text: str | None, *, charged: bool, plain: bool) -> Parent:
+def _finished(
+    mol: Chem.Mol, index: list[int] | None, text: str | None, *, charged: bool, plain: bool
+) -> Parent:
     """Choose the component, neutralise, rewrite; only where the caller's cheap look at the input says so."""
     notes: tuple[str, ...] = ()
     numbers = list(range(mol.GetNumAtoms())) if index is None else index
@@ -165,7 +173,7 @@ def _finished(mol: Chem.Mol, index: list[int] | None, text: str | None, *, charg
 def _parse_hydrogens(smiles: str) -> tuple[Chem.Mol, list[int]]:
     """Parse with every written [H] as an atom, number all atoms, then make ordinary hydrogen implicit."""
     parameters = Chem.SmilesParserParams()
-    parameters.removeHs = False
+    parameters.removeHs = False  # type: ignore[assignment]
     mol = Chem.MolFromSmiles(smiles, parameters)
     if mol is None:
         raise Refusal(_parse_failure(smiles))
@@ -175,15 +183,17 @@ def _parse_hydrogens(smiles: str) -> tuple[Chem.Mol, list[int]]:
 @cache
 def _hydrogen_removal() -> Chem.RemoveHsParameters:
     parameters = Chem.RemoveHsParameters()
-    parameters.removeDefiningBondStereo = True
-    parameters.removeMapped = True
-    parameters.removeNonimplicit = True
-    parameters.showWarnings = False
+    parameters.removeDefiningBondStereo = True  # type: ignore[assignment]
+    parameters.removeMapped = True  # type: ignore[assignment]
+    parameters.removeNonimplicit = True  # type: ignore[assignment]
+    parameters.showWarnings = False  # type: ignore[assignment]
     return parameters
 
 
 def _without_hydrogens(mol: Chem.Mol) -> tuple[Chem.Mol, list[int]]:
-    """Molecule with ordinary hydrogen implicit and atom map numbers off, and the input number of each atom left."""
+    """Molecule with ordinary hydrogen implicit and atom map numbers off, and the input number of each atom
+    left.
+    """
     numbers = list(range(mol.GetNumAtoms()))
     for atom in mol.GetAtoms():
         if atom.GetAtomMapNum():
@@ -219,7 +229,7 @@ def _refuse_ionic_sandwich(mol: Chem.Mol) -> None:
     """Refuse a metallocene drawn as ions: an aromatic carbanion beside a transition metal."""
     if not has_metal(mol) or not mol.HasSubstructMatch(Chem.MolFromSmarts("[c-]")):
         return
-    if any(is_metal(atom) and atom.GetAtomicNum() not in (3, 11, 12, 19, 37, 55) for atom in mol.GetAtoms()):
+    if any(is_metal(atom) and atom.GetAtomicNum() not in _IONIC_METALS for atom in mol.GetAtoms()):
         raise Refusal("a metal complex or organometallic compound (carbanion beside a metal ion)")
 
 
@@ -248,7 +258,9 @@ def _chemistry_problem(mol: Chem.Mol) -> str:
 
 @cache
 def _caution_groups() -> tuple[tuple[frozenset[str], Chem.Mol, tuple[tuple[Chem.Mol, str], ...]], ...]:
-    """Cautions under their cheap tests: what the text shows, a first pattern, then pattern and remark of each row."""
+    """Cautions under their cheap tests: what the text shows, a first pattern, then pattern and remark of each
+    row.
+    """
     collected: dict[tuple[str, str], list[tuple[Chem.Mol, str]]] = {}
     for row in read_table("cautions.csv"):
         rows = collected.setdefault((row["written_with"], row["cheap_test"]), [])

@@ -9,6 +9,7 @@ from functools import cache
 from importlib.resources import files
 from typing import Any
 
+
 def _text(name: str) -> str:
     return files("basirank").joinpath("parameters", name).read_text(encoding="utf-8")
 
@@ -26,7 +27,9 @@ def _parse(name: str, text: str) -> tuple[dict[str, str], ...]:
             header = [cell.strip() for cell in cells]
             continue
         if len(cells) != len(header):
-            raise ValueError(f"{name}, line {reader.line_num}: {len(cells)} cells where the header has {len(header)}")
+            raise ValueError(
+                f"{name}, line {reader.line_num}: {len(cells)} cells where the header has {len(header)}"
+            )
         rows.append({column: cell.strip() for column, cell in zip(header, cells, strict=True)})
     return tuple(rows)
 

@@ -1,9 +1,9 @@
 """The tautomer that rules in water, by a table of rewrites.
 
-Three kinds of row: a hydrogen that goes from one atom to another (hydroxyazine to pyridone, enamine to imine), ring
-nitrogens that hold the movable hydrogen of an azole or lactam, and the nitrogens of an amidine or guanidine that hold
-the C=N. Of equals the choice is made by rank in the bare skeleton, never by atom order, so that both drawings of a
-tautomeric pair give one answer.
+Three kinds of row: a hydrogen that goes from one atom to another (hydroxyazine to pyridone, enamine to
+imine), ring nitrogens that hold the movable hydrogen of an azole or lactam, and the nitrogens of an amidine
+or guanidine that hold the C=N. Of equals the choice is made by rank in the bare skeleton, never by atom
+order, so that both drawings of a tautomeric pair give one answer.
 """
 
 import re
@@ -24,7 +24,8 @@ from basirank.conjugation import (
 )
 from basirank.tables import read_table
 
-# A compound is brought to its final form in a few rewrites; this many for each atom means that rows undo each other.
+# A compound is brought to its final form in a few rewrites; this many for each atom means that rows undo each
+# other.
 MAX_REWRITES_PER_ATOM = 2
 
 _ALL_FEATURES = frozenset({"any", "n2", "nH", "C=N", "OH+n", "OH+C=C", "N+C=C"})
@@ -86,8 +87,8 @@ def written_features(text: str | None) -> frozenset[str]:
     Returns
     -------
     frozenset of str
-        Of ``any``, ``n2`` (two aromatic nitrogens), ``nH``, ``C=N`` (or N=O), ``OH+n`` (hydroxy or mercapto group,
-        and aromatic nitrogen or C=N), ``OH+C=C`` (likewise, and C=C or C=N) and ``N+C=C``.
+        Of ``any``, ``n2`` (two aromatic nitrogens), ``nH``, ``C=N`` (or N=O), ``OH+n`` (hydroxy or mercapto
+        group, and aromatic nitrogen or C=N), ``OH+C=C`` (likewise, and C=C or C=N) and ``N+C=C``.
 
     Examples
     --------
@@ -108,12 +109,13 @@ def written_features(text: str | None) -> frozenset[str]:
     olefin = _CARBON_CARBON_DOUBLE_BOND.search(text) is not None
     if imine:
         found.append("C=N")
+    olefin_and_nitrogen = olefin and "N" in text
     if (aromatic or imine or olefin) and _HYDROXY_OR_MERCAPTO.search(text):
-        if aromatic or imine:
+        if aromatic or imine or olefin_and_nitrogen:
             found.append("OH+n")
         if imine or olefin:
             found.append("OH+C=C")
-    if olefin and "N" in text:
+    if olefin_and_nitrogen:
         found.append("N+C=C")
     return frozenset(found)
 
@@ -126,8 +128,9 @@ def rewrite(mol: Chem.Mol, index: list[int], features: frozenset[str]) -> tuple[
     mol : Mol
         Sanitised molecule, never changed.
     index : list of int
-        Input number of each atom. Where two nitrogens of an azole or amidine exchange roles, their numbers are
-        exchanged too: the nitrogen that has no hydrogen keeps the number of the one that was drawn without.
+        Input number of each atom. Where two nitrogens of an azole or amidine exchange roles, their numbers
+        are exchanged too: the nitrogen that has no hydrogen keeps the number of the one that was drawn
+        without.
     features : frozenset of str
         What the text shows, see `written_features`.
 
@@ -137,7 +140,9 @@ def rewrite(mol: Chem.Mol, index: list[int], features: frozenset[str]) -> tuple[
         The same two objects where nothing was to be done.
     """
     groups = [
-        group for group in _groups() if group.written_with & features and mol.HasSubstructMatch(group.cheap_test)
+        group
+        for group in _groups()
+        if group.written_with & features and mol.HasSubstructMatch(group.cheap_test)
     ]
     for _ in range(MAX_REWRITES_PER_ATOM * mol.GetNumAtoms() + 2):
         step = _one_rewrite(mol, index, groups)
@@ -169,6 +174,11 @@ def _one_rewrite(mol: Chem.Mol, index: list[int], groups: list[_Group]) -> tuple
     return None
 
 
+def _drawn_ranks(mol: Chem.Mol) -> list[int]:
+    """Rank of each atom in the form that was drawn: decides between atoms that the skeleton makes equal."""
+    return list(Chem.CanonicalRankAtoms(mol, breakTies=False))
+
+
 def _move_by_row(mol: Chem.Mol, row: _Row) -> Chem.Mol | None:
     matches = mol.GetSubstructMatches(row.pattern, uniquify=False)
     pairs = {(match[row.first], match[row.second]) for match in matches}
@@ -177,7 +187,10 @@ def _move_by_row(mol: Chem.Mol, row: _Row) -> Chem.Mol | None:
     if row.edit:
         return _edited(mol, row, matches)
     ranks = skeleton_ranks(mol) if len(pairs) > 1 else range(mol.GetNumAtoms())
-    for donor, acceptor in sorted(pairs, key=lambda pair: (ranks[pair[0]], ranks[pair[1]], pair)):
+    drawn = _drawn_ranks(mol) if len(pairs) > 1 else ranks
+    for donor, acceptor in sorted(
+        pairs, key=lambda p: (ranks[p[0]], ranks[p[1]], drawn[p[0]], drawn[p[1]], p)
+    ):
         moved = move_hydrogen(mol, donor, acceptor)
         if moved is not None:
             return moved
@@ -187,10 +200,13 @@ def _move_by_row(mol: Chem.Mol, row: _Row) -> Chem.Mol | None:
 def _edited(mol: Chem.Mol, row: _Row, matches: tuple[tuple[int, ...], ...]) -> Chem.Mol | None:
     """The molecule after the edit cell of a row, on the match of lowest rank."""
     ranks = skeleton_ranks(mol) if len(matches) > 1 else range(mol.GetNumAtoms())
-    match = min(matches, key=lambda atoms: [ranks[atom] for atom in atoms])
+    drawn = _drawn_ranks(mol) if len(matches) > 1 else ranks
+    match = min(matches, key=lambda atoms: ([ranks[a] for a in atoms], [drawn[a] for a in atoms], atoms))
     numbers = (atom.GetAtomMapNum() for atom in row.pattern.GetAtoms())
     edited = kekulised(mol)
-    apply_edit(edited, row.edit, {number: atom for number, atom in zip(numbers, match, strict=True) if number})
+    apply_edit(
+        edited, row.edit, {number: atom for number, atom in zip(numbers, match, strict=True) if number}
+    )
     try:
         finish(edited)
     except Chem.MolSanitizeException:
@@ -199,7 +215,9 @@ def _edited(mol: Chem.Mol, row: _Row, matches: tuple[tuple[int, ...], ...]) -> C
 
 
 def _keys(mol: Chem.Mol, pairs: set[tuple[int, int]], rows: tuple[_Row, ...]) -> dict[int, tuple[bool, ...]]:
-    """Preference of each atom of some pairs, the smaller the better; rows are read until all pairs are decided."""
+    """Preference of each atom of some pairs, the smaller the better; rows are read until all pairs are
+    decided.
+    """
     keys: dict[int, tuple[bool, ...]] = {atom: () for pair in pairs for atom in pair}
     for row in rows:
         if all(keys[a] != keys[b] for a, b in pairs):
@@ -218,7 +236,9 @@ def _ring_pairs(mol: Chem.Mol) -> Iterator[tuple[int, int]]:
         atoms = [mol.GetAtomWithIdx(i) for i in ring]
         if not all(atom.GetIsAromatic() for atom in atoms):
             continue
-        nitrogens = [a for a in atoms if a.GetAtomicNum() == 7 and a.GetDegree() == 2 and not a.GetFormalCharge()]
+        nitrogens = [
+            a for a in atoms if a.GetAtomicNum() == 7 and a.GetDegree() == 2 and not a.GetFormalCharge()
+        ]
         for donor in nitrogens:
             if donor.GetTotalNumHs():
                 for acceptor in nitrogens:
@@ -226,7 +246,9 @@ def _ring_pairs(mol: Chem.Mol) -> Iterator[tuple[int, int]]:
                         yield donor.GetIdx(), acceptor.GetIdx()
 
 
-def _place_hydrogen(mol: Chem.Mol, index: list[int], rows: tuple[_Row, ...]) -> tuple[Chem.Mol, list[int]] | None:
+def _place_hydrogen(
+    mol: Chem.Mol, index: list[int], rows: tuple[_Row, ...]
+) -> tuple[Chem.Mol, list[int]] | None:
     pairs = set(_ring_pairs(mol))
     if not pairs:
         return None
@@ -235,7 +257,9 @@ def _place_hydrogen(mol: Chem.Mol, index: list[int], rows: tuple[_Row, ...]) -> 
     level = {pair for pair in pairs if keys[pair[1]] == keys[pair[0]]}
     ranks = skeleton_ranks(mol) if level or len(better) > 1 else list(range(mol.GetNumAtoms()))
     better |= {pair for pair in level if ranks[pair[1]] < ranks[pair[0]]}
-    for donor, acceptor in sorted(better, key=lambda p: (keys[p[1]], ranks[p[1]], ranks[p[0]], p)):
+    drawn = _drawn_ranks(mol) if len(better) > 1 else ranks
+    order = sorted(better, key=lambda p: (keys[p[1]], ranks[p[1]], ranks[p[0]], drawn[p[1]], drawn[p[0]], p))
+    for donor, acceptor in order:
         moved = move_hydrogen(mol, donor, acceptor)
         if moved is not None:
             return moved, _exchanged(index, donor, acceptor)
@@ -246,7 +270,9 @@ def _place_hydrogen(mol: Chem.Mol, index: list[int], rows: tuple[_Row, ...]) -> 
     return None
 
 
-def _place_double_bond(mol: Chem.Mol, index: list[int], rows: tuple[_Row, ...]) -> tuple[Chem.Mol, list[int]] | None:
+def _place_double_bond(
+    mol: Chem.Mol, index: list[int], rows: tuple[_Row, ...]
+) -> tuple[Chem.Mol, list[int]] | None:
     units = sorted(set(mol.GetSubstructMatches(_amidine(), uniquify=False)))
     units = [unit for unit in units if not (_is_terminal(mol, unit[0]) and _is_terminal(mol, unit[2]))]
     if not units:
@@ -260,8 +286,9 @@ def _place_double_bond(mol: Chem.Mol, index: list[int], rows: tuple[_Row, ...]) 
         return keys[atom], ranks[atom] if ranks else 0
 
     better = [unit for unit in units if preference(unit[2]) < preference(unit[0])]
-    better.sort(key=lambda unit: (preference(unit[2]), preference(unit[0]), unit))
     if better:
+        drawn = _drawn_ranks(mol) if len(better) > 1 else range(mol.GetNumAtoms())
+        better.sort(key=lambda u: (preference(u[2]), preference(u[0]), [drawn[atom] for atom in u], u))
         chosen = _disjoint(better)
         moved = _move_double_bonds(mol, chosen)
         if moved is not None:
@@ -294,7 +321,7 @@ def _amidine() -> Chem.Mol:
 
 
 def _has_stereo(bond: Chem.Bond) -> bool:
-    return bond.GetStereo() > Chem.BondStereo.STEREOANY
+    return bool(bond.GetStereo() > Chem.BondStereo.STEREOANY)
 
 
 def _disjoint(units: list[tuple[int, int, int]]) -> list[tuple[int, int, int]]:
@@ -309,7 +336,7 @@ def _disjoint(units: list[tuple[int, int, int]]) -> list[tuple[int, int, int]]:
 
 
 def _move_double_bonds(mol: Chem.Mol, units: list[tuple[int, int, int]]) -> Chem.RWMol | None:
-    """Molecule with C=N moved in each unit (nitrogen with the double bond, carbon, nitrogen with hydrogen)."""
+    """Molecule with C=N moved in each unit (nitrogen that has it, carbon, nitrogen with hydrogen)."""
     edited = Chem.RWMol(mol)
     for acceptor, middle, donor in units:
         atom = mol.GetAtomWithIdx(donor)
@@ -324,10 +351,20 @@ def _move_double_bonds(mol: Chem.Mol, units: list[tuple[int, int, int]]) -> Chem
 
 
 def _smaller_smiles(mol: Chem.Mol, moved: Chem.Mol | None) -> Chem.Mol | None:
-    """The moved form if it differs from the drawn one (in stereo only) and its text comes first."""
-    if moved is None or not any(a.GetChiralTag() for a in mol.GetAtoms()):
+    """The moved form if it differs from the drawn one (in stereo, or by a C=C) and its text comes first.
+
+    Nitrogens of equal rank in the skeleton are equivalent, but for these.
+    """
+    if moved is None or not (
+        any(a.GetChiralTag() for a in mol.GetAtoms()) or mol.HasSubstructMatch(_olefin())
+    ):
         return None
     return moved if Chem.MolToSmiles(moved) < Chem.MolToSmiles(mol) else None
+
+
+@cache
+def _olefin() -> Chem.Mol:
+    return Chem.MolFromSmarts("C=C")
 
 
 def _exchanged(index: list[int], a: int, b: int) -> list[int]:

@@ -152,6 +152,7 @@ def test_constants_outside_the_reported_range_are_empty_and_keep_their_number():
         prediction("NCCN", [(0, "base", 17, "a"), (3, "base", 9, "b")], [("base", 16.2, 0), ("base", 9.0, 1)])
     )
     assert (row["pkah_1"], row["pkah_1_low"], row["pkah_1_atom"], row["pkah_2"]) == ("", "", "", "9.00")
+    assert row["message"] == "first pKaH above 16, not reported"
     row = as_text(prediction("CC#N", [(2, "base", -10, "nitrile")], [("base", -10.0, 0)]))
     assert (row["pkah_1"], row["pkah_1_class"], row["steps_omitted"]) == ("", "", "0")
 

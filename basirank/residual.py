@@ -1,0 +1,325 @@
+r"""Residual: what the lines miss, regressed on measured values with a sparse Gaussian process.
+
+The surroundings of a site are counted (`surroundings`); two sites are alike as far as their counts overlap (the
+min-max kernel), more so when they share class or family; only sites of one group (amines,
+azines, azoles, ...) speak to each other. The correction fades to zero where nothing measured is alike, and its variance says how far
+that is. Training goes through the equilibrium (`scripts/train`); this module only predicts.
+"""
+
+from __future__ import annotations
+
+import json
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cache
+from importlib.resources import as_file, files
+
+import numpy as np
+from numpy.typing import NDArray
+
+from .graph import Graph
+from .sites import Site
+from .surroundings import REACH, Piece, Surroundings, site_counts, spelled, weighted
+from .tables import read_table
+
+__all__ = ["BLOCK", "Correction", "Kernel", "corrections", "group_of", "model", "site_counts", "weighted"]
+
+BLOCK = 64
+"""Sites in one matrix product; rows are padded to it so that a result doesn't depend on the batch it came in."""
+
+_VECTOR = 8
+"""Elements that a processor handles together at most (64-bit numbers)."""
+
+Floats = NDArray[np.float64]
+Codes = NDArray[np.int64]
+
+
+@dataclass(frozen=True, slots=True)
+class Kernel:
+    """Hyperparameters of the covariance of two corrections.
+
+    Attributes
+    ----------
+    same_class, same_family, same_group : float
+        Standard deviations of the shares that two sites have in common by class, by family and by group of
+        families [pK units].
+    fade : float
+        Weight of a feature per bond of distance [-].
+    value_share : float
+        Share of the covariance that also asks for similar line values [-].
+    value_width : float
+        Width of that comparison [pK units].
+    """
+
+    same_class: float
+    same_family: float
+    same_group: float
+    fade: float
+    value_share: float
+    value_width: float
+
+    @property
+    def variance(self) -> float:
+        """Prior variance of a correction [pK units squared]."""
+        return self.same_class**2 + self.same_family**2 + self.same_group**2
+
+    def covariance(
+        self,
+        overlap: Floats,
+        total: tuple[Floats, Floats],
+        value: tuple[Floats, Floats],
+        site_class: tuple[Codes, Codes],
+        family: tuple[Codes, Codes],
+    ) -> Floats:
+        r"""Covariance of the corrections of two sets of sites of one group.
+
+        .. math:: k(a, b) = (s_c^2 [c_a = c_b] + s_f^2 [f_a = f_b] + s_g^2)\,m(a, b)\,
+                  (1 - v + v e^{-(x_a - x_b)^2 / 2 w^2}), \quad m = \frac{\sum \min}{\sum \max}
+
+        Parameters
+        ----------
+        overlap : ndarray, shape (a, b)
+            Sum of the minima of the weighted counts.
+        total, value, site_class, family : pairs of ndarray, shapes (a,) and (b,)
+            Sum of the weighted counts, line value, and codes of class and family.
+
+        Returns
+        -------
+        ndarray, shape (a, b)
+            Covariance [pK units squared].
+        """
+        # in place where it can be: a fresh array for each operation costs more than the arithmetic
+        result = self.same_class**2 * (site_class[0][:, None] == site_class[1][None, :])
+        result += self.same_family**2 * (family[0][:, None] == family[1][None, :])
+        result += self.same_group**2
+        union = total[0][:, None] + total[1][None, :]
+        union -= overlap
+        result *= np.divide(overlap, union, out=union)
+        near = value[0][:, None] - value[1][None, :]
+        near /= self.value_width
+        near *= near
+        near *= -0.5
+        np.exp(near, out=near)
+        near *= self.value_share
+        near += 1.0 - self.value_share
+        result *= near
+        return result
+
+
+@cache
+def group_of() -> dict[str, str]:
+    """Group of each family (`families.csv`)."""
+    return {row["family"]: row["group"] for row in read_table("families.csv")}
+
+
+@dataclass(frozen=True, slots=True)
+class Correction:
+    """Correction of one site.
+
+    Attributes
+    ----------
+    value : float
+        To be added to the line's value [pK units].
+    half_width : float
+        Half of the 90 % interval of the corrected intrinsic constant [pK units].
+    support : {"supported", "extrapolated"}
+        Whether measured neighbours stand behind it.
+    """
+
+    value: float
+    half_width: float
+    support: str
+
+
+_MOST_READ = 50_000
+"""Pieces that a group remembers at most."""
+
+
+@dataclass(frozen=True, slots=True)
+class Group:
+    """Trained arrays of one group: its basis sites, their weights and the matrix of the variance.
+
+    `features` has a row for each feature known in the group and a column for each basis site; `copies` gives for the
+    row of a feature those of its second, third, ... copy. `read` remembers pieces met before: distance, number of
+    features, and rows of those that are known.
+    """
+
+    vocabulary: dict[str, int]
+    copies: dict[int, tuple[int, ...]]
+    read: dict[Piece, tuple[int, int, tuple[int, ...]]]
+    features: NDArray[np.float32]
+    total: Floats
+    value: Floats
+    site_class: Codes
+    family: Codes
+    weights: Floats
+    explained: NDArray[np.float32]
+
+    def look_up(self, piece: Piece) -> tuple[int, int, tuple[int, ...]]:
+        """Distance, number of features and known rows of a piece, remembered."""
+        if len(self.read) >= _MOST_READ:
+            self.read.clear()
+        features = spelled(piece)
+        known = tuple(self.vocabulary[feature] for feature in features if feature in self.vocabulary)
+        self.read[piece] = found = (int(features[0][0]), len(features), known)
+        return found
+
+    def rows(self, pieces: Sequence[Piece]) -> tuple[list[int], list[int]]:
+        """Rows of the features that pieces show, copies included, and the number of features at each distance."""
+        tally = [0] * (REACH + 1)
+        counts: dict[int, int] = {}
+        read = self.read
+        for piece in pieces:
+            away, number, known = read.get(piece) or self.look_up(piece)
+            tally[away] += number
+            for row in known:
+                counts[row] = counts.get(row, 0) + 1
+        rows = []
+        for row, count in counts.items():
+            rows.append(row)
+            if count > 1 and row in self.copies:
+                rows += self.copies[row][: count - 1]
+        return rows, tally
+
+
+def _copies(vocabulary: dict[str, int]) -> dict[int, tuple[int, ...]]:
+    """Rows of the second, third, ... copy of each feature, as far as they follow without a gap."""
+    found = {}
+    for feature, row in vocabulary.items():
+        more: list[int] = []
+        while (again := vocabulary.get(f"{feature} #{len(more) + 2}")) is not None:
+            more.append(again)
+        if more:
+            found[row] = tuple(more)
+    return found
+
+
+@dataclass(frozen=True, slots=True)
+class Model:
+    """The trained regression (`models/residual.npz`, `models/residual.json`)."""
+
+    kernel: Kernel
+    groups: dict[str, Group]
+    classes: dict[str, int]
+    families: dict[str, int]
+    spread: dict[str, float]
+    quantile: dict[str, float]
+    threshold: float
+
+
+@cache
+def model() -> Model:
+    """The trained model.
+
+    Raises
+    ------
+    FileNotFoundError
+        The package was built without it.
+    """
+    folder = files("basirank.models")
+    settings = json.loads(folder.joinpath("residual.json").read_text(encoding="utf-8"))
+    groups = {}
+    with as_file(folder.joinpath("residual.npz")) as path, np.load(path, allow_pickle=False) as arrays:
+        for name in settings["groups"]:
+            part = {field: arrays[f"{name}/{field}"] for field in GROUP_ARRAYS}
+            features = np.zeros((len(part["vocabulary"]), len(part["total"])), dtype=np.float32)
+            features[part["rows"], part["columns"]] = part["feature_weight"]
+            vocabulary = {feature: place for place, feature in enumerate(part["vocabulary"].tolist())}
+            groups[name] = Group(
+                vocabulary,
+                _copies(vocabulary),
+                {},
+                features,
+                *(part[field] for field in ("total", "value", "site_class", "family", "weights", "explained")),
+            )
+    return Model(
+        kernel=Kernel(**settings["kernel"]),
+        groups=groups,
+        **{field: settings[field] for field in ("classes", "families", "spread", "quantile", "threshold")},
+    )
+
+
+GROUP_ARRAYS = (
+    "vocabulary", "rows", "columns", "feature_weight", "total", "value", "site_class", "family", "weights", "explained",
+)  # fmt: skip
+"""Arrays stored for each group, under `<group>/<name>`."""
+
+
+def corrections(graphs: Sequence[Graph], sites: Sequence[Site], values: Sequence[float]) -> list[Correction]:
+    """Corrections of a batch of sites.
+
+    Parameters
+    ----------
+    graphs : sequence of Graph
+        Molecule of each site.
+    sites : sequence of Site
+        The sites.
+    values : sequence of float
+        Line value of each [-].
+
+    Returns
+    -------
+    list of Correction
+        One for each site.
+    """
+    trained = model()
+    by_group: dict[str, list[int]] = {}
+    around: list[Surroundings] = []
+    for place, (graph, site) in enumerate(zip(graphs, sites, strict=True)):
+        by_group.setdefault(group_of()[site.row.family], []).append(place)
+        # sites of one molecule follow each other and share what is made of its atoms
+        around.append(around[-1] if around and around[-1].graph is graph else Surroundings(graph))
+    results: dict[int, Correction] = {}
+    for name, places in by_group.items():
+        for start in range(0, len(places), BLOCK):
+            part = places[start : start + BLOCK]
+            mean, left = _block(
+                trained, name, [around[p] for p in part], [sites[p] for p in part], [values[p] for p in part]
+            )
+            for place, one, variance in zip(part, mean.tolist(), left.tolist(), strict=False):
+                results[place] = _correction(trained, sites[place], one, variance)
+    return [results[place] for place in range(len(sites))]
+
+
+def _correction(trained: Model, site: Site, mean: float, left: float) -> Correction:
+    """Correction of one site from its mean and the variance that is left."""
+    support = "supported" if left < trained.threshold * trained.kernel.variance else "extrapolated"
+    noise = trained.spread.get(site.site_class, trained.spread[f"all {site.kind}s"])
+    return Correction(mean, trained.quantile[support] * math.sqrt(left + noise**2), support)
+
+
+def _block(
+    trained: Model, name: str, around: Sequence[Surroundings], sites: Sequence[Site], values: Sequence[float]
+) -> tuple[Floats, Floats]:
+    """Mean and remaining variance of at most `BLOCK` sites of one group, then those of the padding."""
+    prior = trained.kernel.variance
+    group = trained.groups.get(name)
+    if group is None:
+        return np.zeros(len(sites)), np.full(len(sites), prior)
+    # whole vectors of the processor, so that no element is computed by other means for standing last
+    filled = -(-len(sites) // _VECTOR) * _VECTOR
+    overlap = np.zeros((filled, len(group.total)), dtype=np.float32)
+    total, value = np.ones(filled), np.zeros(filled)
+    site_class, family = np.full(filled, -1), np.full(filled, -1)
+    fade = [trained.kernel.fade**away for away in range(REACH + 1)]
+    for row, (surroundings, site) in enumerate(zip(around, sites, strict=True)):
+        rows, tally = group.rows(surroundings.pieces(site.atom))
+        if rows:
+            np.add.reduce(group.features.take(rows, axis=0), axis=0, out=overlap[row])
+        total[row] = sum(number * weight for number, weight in zip(tally, fade, strict=True))
+        site_class[row] = trained.classes.get(site.site_class, -1)
+        family[row] = trained.families.get(site.row.family, -1)
+    value[: len(values)] = values
+    covariance = np.zeros((BLOCK, len(group.total)))
+    covariance[:filled] = trained.kernel.covariance(
+        overlap.astype(np.float64),
+        (total, group.total),
+        (value, group.value),
+        (site_class, group.site_class),
+        (family, group.family),
+    )
+    mean = covariance @ group.weights
+    small = covariance.astype(np.float32)
+    explained = ((small @ group.explained) * small).sum(axis=1, dtype=np.float64)
+    return mean, np.clip(prior - explained, 1e-3 * prior, prior)
