@@ -8,24 +8,28 @@ constant; which descriptor a term means is defined here, once.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from functools import cache
+from typing import Any, NamedTuple
 
-from .graph import Graph
+from .graph import AROMATIC, Graph
 from .sites import Site, SiteClass
 from .substituents import ChainHit, RingHit, Substituents, chain_walk, ring_walk
 from .tables import read_model_table, read_table
 
 
-@dataclass(frozen=True, slots=True)
-class Term:
+Label = str | tuple[Any, ...]
+"""Text, or a format string and what goes into it: put into words only when somebody reads the term."""
+
+
+class Term(NamedTuple):
     """One increment of an intrinsic constant: coefficient times descriptor, tied to atoms.
 
     Attributes
     ----------
-    name : str
-        What the term is, e.g. "sigma* of hydroxy, 2 bonds out".
+    label : str or tuple
+        What the term is; `name` gives it as text.
     atoms : tuple of int
         Parent atoms it comes from.
     descriptor, coefficient : float
@@ -36,12 +40,17 @@ class Term:
         Row of the coefficient table: owner, anchors, term.
     """
 
-    name: str
+    label: Label
     atoms: tuple[int, ...]
     descriptor: float
     coefficient: float
     source: str
     key: tuple[str, str, str] = ("", "", "")
+
+    @property
+    def name(self) -> str:
+        """What the term is, e.g. "sigma* of hydroxy, 2 bonds out"."""
+        return self.label if isinstance(self.label, str) else self.label[0].format(*self.label[1:])
 
     @property
     def value(self) -> float:
@@ -73,7 +82,12 @@ class Estimate:
     @property
     def value(self) -> float:
         """Intrinsic pKaH (base) or pKa (acid) [-]."""
-        return sum(term.value for term in self.terms)
+        return sum_of(self.terms)
+
+
+def sum_of(terms: Iterable[Term]) -> float:
+    """Sum of some terms, in their order [pK units]."""
+    return sum([term.descriptor * term.coefficient for term in terms])
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,44 +108,55 @@ class Coefficient:
         return (self.owner, self.anchors, self.term)
 
 
-Descriptor = tuple[str, tuple[int, ...], float]
+Descriptor = tuple[Label, tuple[int, ...], float]
+Describe = Callable[["SiteWalks", int], Iterable[Descriptor]]
 
 
 class SiteWalks:
     """Walks from the anchors of one site, made on demand and shared by its terms."""
 
-    __slots__ = ("substituents", "graph", "core", "_chain", "_ring")
+    __slots__ = ("substituents", "graph", "core", "_chain", "_ring", "_direct")
 
     def __init__(self, substituents: Substituents, site: Site) -> None:
         self.substituents = substituents
         self.graph: Graph = substituents.graph
         self.core = frozenset(site.core)
         self._chain: dict[int, list[ChainHit]] = {}
-        self._ring: dict[int, list[RingHit]] = {}
+        self._ring: dict[int, dict[tuple[str, str], list[RingHit]]] = {}
+        self._direct: dict[int, list[tuple[int, int]]] = {}
 
     def chain(self, anchor: int) -> list[ChainHit]:
         """Groups met along chains from the anchor."""
         hits = self._chain.get(anchor)
         if hits is None:
-            hits = self._chain[anchor] = list(chain_walk(self.substituents, anchor, self.core))
+            hits = self._chain[anchor] = chain_walk(self.substituents, anchor, self.core)
         return hits
 
-    def ring(self, anchor: int) -> list[RingHit]:
-        """What the aromatic system carries, seen from the anchor."""
+    def ring(self, anchor: int, feature: str, position: str) -> Sequence[RingHit]:
+        """What of one sort the aromatic system carries at a position; "" for all but ortho, in order of distance."""
         hits = self._ring.get(anchor)
         if hits is None:
-            found = list(ring_walk(self.substituents, anchor, self.core)) if self.graph.aromatic[anchor] else []
-            hits = self._ring[anchor] = found
-        return hits
+            hits = self._ring[anchor] = {}
+            if self.graph.aromatic[anchor]:
+                for hit in ring_walk(self.substituents, anchor, self.core):
+                    hits.setdefault((hit.feature, hit.position), []).append(hit)
+                    if hit.position != "ortho":
+                        hits.setdefault((hit.feature, ""), []).append(hit)
+        return hits.get((feature, position), ())
 
     def direct(self, anchor: int) -> list[tuple[int, int]]:
         """Atoms bound to the anchor outside the unit, aromatic bonds apart."""
-        return [(o, order) for o, order in self.graph.neighbours[anchor] if order != 4 and o not in self.core]
+        found = self._direct.get(anchor)
+        if found is None:
+            around = self.graph.neighbours[anchor]
+            found = [(o, order) for o, order in around if order != AROMATIC and o not in self.core]
+            self._direct[anchor] = found
+        return found
 
 
-def _sigma_star(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
-    for hit in walks.chain(anchor):
-        yield f"sigma* of {hit.group.name}, {hit.distance} out", hit.atoms, hit.sigma_star
+def _sigma_star(walks: SiteWalks, anchor: int) -> list[Descriptor]:
+    label = "sigma* of {0.group.name}, {0.distance} out"
+    return [((label, hit), hit.atoms, hit.sigma_star) for hit in walks.chain(anchor)]
 
 
 def _alkyl(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
@@ -167,11 +192,11 @@ def _hydrogens(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
         yield "hydrogen on the site", (anchor,), float(walks.graph.hydrogens[anchor])
 
 
-def _ring_size(size: int) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
+def _ring_size(size: int) -> Describe:
     def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
         found = walks.graph.smallest_ring(anchor)
         if found == size or (size == 8 and found > 8):
-            yield f"in a ring of {found}", (anchor,), 1.0
+            yield ("in a ring of {}", found), (anchor,), 1.0
 
     return descriptor
 
@@ -182,51 +207,58 @@ def _bicyclic(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
         yield "shared by rings", (anchor,), float(rings - 1)
 
 
-def _direct(constant: str, label: str) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
-    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
-        for other, order in walks.direct(anchor):
-            group = walks.substituents.group(other, anchor, order)
-            yield f"{label} of {group.name}", (other,), getattr(group, constant)
+def _direct(constant: str, label: str) -> Describe:
+    label += " of {0.name}"
+
+    def descriptor(walks: SiteWalks, anchor: int) -> list[Descriptor]:
+        group = walks.substituents.group
+        groups = [(other, group(other, anchor, order)) for other, order in walks.direct(anchor)]
+        return [((label, group), (other,), getattr(group, constant)) for other, group in groups]
 
     return descriptor
 
 
-def _hammett(para: str) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
-    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
-        for hit in walks.ring(anchor):
-            if hit.group is None or hit.position == "ortho":
-                continue
-            label = hit.position if hit.position != "far" else f"{hit.distance} bonds round"
-            if hit.alternant:
-                sign = "sigma-" if para == "sigma_minus" else "sigma_p"
-                yield f"{sign} of {hit.group.name} ({label})", hit.atoms, getattr(hit, para)
-            else:
-                yield f"sigma_m of {hit.group.name} ({label})", hit.atoms, hit.sigma_meta
+def _hammett(para: str) -> Describe:
+    mesomeric = ("sigma-" if para == "sigma_minus" else "sigma_p") + " of {0.group.name} ({0.label})"
+    field = "sigma_m of {0.group.name} ({0.label})"
+
+    def descriptor(walks: SiteWalks, anchor: int) -> list[Descriptor]:
+        return [
+            ((mesomeric, hit), hit.atoms, getattr(hit, para))
+            if hit.alternant
+            else ((field, hit), hit.atoms, hit.sigma_meta)
+            for hit in walks.ring(anchor, "group", "")
+        ]
 
     return descriptor
 
 
-def _ortho(constant: str, label: str) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
-    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
-        for hit in walks.ring(anchor):
-            if hit.group is not None and hit.position == "ortho":
-                value = getattr(hit.group, constant) if constant else 1.0
-                yield f"{label} of {hit.group.name} (ortho)", hit.atoms, value
+def _ortho(constant: str, label: str) -> Describe:
+    label += " of {0.group.name} (ortho)"
+
+    def descriptor(walks: SiteWalks, anchor: int) -> list[Descriptor]:
+        return [
+            ((label, hit), hit.atoms, getattr(hit.group, constant) if constant else 1.0)
+            for hit in walks.ring(anchor, "group", "ortho")
+        ]
 
     return descriptor
 
 
-def _feature(feature: str, position: str, distance: int = 0) -> Callable[[SiteWalks, int], Iterator[Descriptor]]:
-    def descriptor(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
-        for hit in walks.ring(anchor):
-            if hit.feature == feature and hit.position == position and distance in (0, hit.distance):
-                place = position if position != "far" else f"fused ring, {hit.distance} bonds away"
-                yield f"{feature} ({place})", hit.atoms, 1.0 if distance else hit.fade
+def _feature(feature: str, position: str, distance: int = 0) -> Describe:
+    label = f"{feature} ({position})" if position != "far" else feature + " (fused ring, {0.distance} bonds away)"
+
+    def descriptor(walks: SiteWalks, anchor: int) -> list[Descriptor]:
+        return [
+            ((label, hit), hit.atoms, 1.0 if distance else hit.fade)
+            for hit in walks.ring(anchor, feature, position)
+            if distance in (0, hit.distance)
+        ]
 
     return descriptor
 
 
-def _feature_terms() -> dict[str, Callable[[SiteWalks, int], Iterator[Descriptor]]]:
+def _feature_terms() -> dict[str, Describe]:
     features = {
         "aza": "aza",
         "pyrrolic": "pyrrole-type nitrogen",
@@ -246,7 +278,7 @@ def _feature_terms() -> dict[str, Callable[[SiteWalks, int], Iterator[Descriptor
     return terms
 
 
-TERMS: dict[str, Callable[[SiteWalks, int], Iterator[Descriptor]]] = {
+TERMS: dict[str, Describe] = {
     "sigma_star": _sigma_star,
     "alkyl": _alkyl,
     "aryl": _aryl,
@@ -293,7 +325,19 @@ class Line:
 
     parent: float
     parent_source: str
-    steps: tuple[tuple[tuple[int, ...], Callable[[SiteWalks, int], Iterator[Descriptor]], Coefficient], ...]
+    steps: tuple[tuple[frozenset[int], Describe, Coefficient], ...]
+    plans: dict[tuple[int, ...], list[tuple[Describe, Coefficient, tuple[int, ...]]]]
+
+    def plan(self, roles: tuple[int, ...]) -> list[tuple[Describe, Coefficient, tuple[int, ...]]]:
+        """Steps that concern a site with anchors of these roles, and at which of them; remembered."""
+        plan = self.plans.get(roles)
+        if plan is None:
+            plan = self.plans[roles] = []
+            for wanted, describe, coefficient in self.steps:
+                places = tuple(place for place, role in enumerate(roles) if role in wanted)
+                if places:
+                    plan.append((describe, coefficient, places))
+        return plan
 
 
 @cache
@@ -307,8 +351,8 @@ def _line(name: str, family: str, prior: float, source: str) -> Line:
     own = table.get(name, ())
     taken = {(c.anchors, c.term) for c in own}
     rows = own + tuple(c for c in table.get(family, ()) if (c.anchors, c.term) not in taken)
-    steps = tuple((tuple(int(a) for a in row.anchors.split()), TERMS[row.term], row) for row in rows)
-    return Line(parent, source, steps)
+    steps = tuple((frozenset(map(int, row.anchors.split())), TERMS[row.term], row) for row in rows)
+    return Line(parent, source, steps, {})
 
 
 def line_of(row: SiteClass) -> Line:
@@ -333,15 +377,14 @@ def site_terms(substituents: Substituents, site: Site) -> tuple[Term, ...]:
     """
     line = line_of(site.row)
     walks = SiteWalks(substituents, site)
-    terms = [
-        Term(f"parent: {site.site_class}", site.core, 1.0, line.parent, line.parent_source, (site.site_class, "", "parent"))
-    ]
-    for roles, describe, coefficient in line.steps:
-        for role, anchor in site.anchors:
-            if role in roles:
-                for name, atoms, descriptor in describe(walks, anchor):
-                    if descriptor:
-                        terms.append(
-                            Term(name, atoms, descriptor, coefficient.value, coefficient.source, coefficient.key)
-                        )
+    parent = ("parent: {}", site.site_class)
+    terms = [Term(parent, site.core, 1.0, line.parent, line.parent_source, (site.site_class, "", "parent"))]
+    anchors = [anchor for _, anchor in site.anchors]
+    for describe, coefficient, places in line.plan(tuple([role for role, _ in site.anchors])):
+        for place in places:
+            for label, atoms, descriptor in describe(walks, anchors[place]):
+                if descriptor:
+                    terms.append(
+                        Term(label, atoms, descriptor, coefficient.value, coefficient.source, coefficient.key)
+                    )
     return tuple(terms)

@@ -6,9 +6,9 @@ with the number of bonds between the sites, more slowly along a conjugated path,
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
-from functools import cache
+from functools import cache, lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -143,27 +143,97 @@ def _centre(site: Site) -> int:
     return site.atom
 
 
-def _paths_from(graph: Graph, start: int) -> tuple[dict[int, int], dict[int, int], dict[int, int]]:
-    """Shortest distance, number of shortest paths and most conjugated bonds on one, for every atom."""
+def _paths_from(
+    graph: Graph, start: int, ends: Collection[int]
+) -> tuple[dict[int, int], dict[int, int], dict[int, int]]:
+    """Shortest distance, number of shortest paths and most conjugated bonds on one, as far as the last of the ends."""
     distance, count, conjugated = {start: 0}, {start: 1}, {start: 0}
     edge = [start]
     kind = graph.kind
-    while edge:
+    away = 0
+    left = set(ends)
+    while edge and not left <= distance.keys():
+        away += 1
         following: list[int] = []
         for inner in edge:
             saturated = kind[inner] == "C3"
+            number, along = count[inner], conjugated[inner]
             for other, _ in graph.neighbours[inner]:
-                step = 0 if saturated or kind[other] == "C3" else 1
-                if other not in distance:
-                    distance[other] = distance[inner] + 1
-                    count[other] = count[inner]
-                    conjugated[other] = conjugated[inner] + step
+                known = distance.get(other)
+                if known is None:
+                    distance[other] = away
+                    count[other] = number
+                    conjugated[other] = along if saturated or kind[other] == "C3" else along + 1
                     following.append(other)
-                elif distance[other] == distance[inner] + 1:
-                    count[other] += count[inner]
-                    conjugated[other] = max(conjugated[other], conjugated[inner] + step)
+                elif known == away:
+                    count[other] += number
+                    step = along if saturated or kind[other] == "C3" else along + 1
+                    conjugated[other] = max(conjugated[other], step)
         edge = following
     return distance, count, conjugated
+
+
+Pair = tuple[int, int, int, int]
+"""Bonds, conjugated bonds, number of shortest paths and acids of two sites, as in `Paths`."""
+
+
+def site_pairs(graph: Graph, sites: Sequence[Site]) -> dict[tuple[int, int], tuple[Pair, bool]]:
+    """Path between the sites of each pair i < j, and whether they are one tautomeric unit (see `find_paths`)."""
+    centres = [_centre(site) for site in sites]
+    oxygens = [site.row.family in _families("delocalised_acid") for site in sites]
+    pairs = {}
+    for i, first in enumerate(sites[:-1]):
+        distance, number, along = _paths_from(graph, centres[i], centres[i + 1 :])
+        for j in range(i + 1, len(sites)):
+            second, other = sites[j], centres[j]
+            exclusive = False
+            if first.kind != second.kind:
+                base, acid = (first, second) if first.kind == "base" else (second, first)
+                shift = (
+                    0 < distance[other] <= _LONGEST_SHIFT
+                    and distance[other] % 2 == 0
+                    and along[other] == distance[other]
+                    and graph.kind[base.atom] in _ACCEPTORS
+                    and acid.row.family in _SHIFTING
+                )
+                exclusive = shift or acid.atom in base.core
+            pairs[i, j] = (distance[other], along[other], number[other], oxygens[i] + oxygens[j]), exclusive
+    return pairs
+
+
+@lru_cache(maxsize=10_000)
+def _pair_coupling(pair: Pair) -> float:
+    """Interaction of two sites under the law in use; paths repeat, and small arrays cost more than their arithmetic."""
+    paths = Paths(*[np.array([[0, number], [number, 0]]) for number in pair])
+    return float(coupling_matrix(paths, law())[0, 1])
+
+
+def couple(graph: Graph, sites: Sequence[Site]) -> tuple[NDArray[np.float64], NDArray[np.bool_] | None]:
+    """Interactions of all pairs of sites under the law in use, and the tautomeric pairs.
+
+    Parameters
+    ----------
+    graph : Graph
+        Plain arrays of the molecule.
+    sites : sequence of Site
+        Its n sites.
+
+    Returns
+    -------
+    coupling : ndarray, shape (n, n)
+        W [pK units].
+    exclusive : ndarray of bool, shape (n, n), or None
+        Tautomeric pairs; None when there is none.
+    """
+    coupling = np.zeros((len(sites), len(sites)))
+    exclusive: NDArray[np.bool_] | None = None
+    for (i, j), (pair, one_unit) in site_pairs(graph, sites).items():
+        coupling[i, j] = coupling[j, i] = _pair_coupling(pair)
+        if one_unit:
+            if exclusive is None:
+                exclusive = np.zeros(coupling.shape, dtype=bool)
+            exclusive[i, j] = exclusive[j, i] = True
+    return coupling, exclusive
 
 
 def find_paths(graph: Graph, sites: Sequence[Site]) -> tuple[Paths, NDArray[np.bool_] | None]:
@@ -193,24 +263,8 @@ def find_paths(graph: Graph, sites: Sequence[Site]) -> tuple[Paths, NDArray[np.b
     conjugated, acids = bonds.copy(), bonds.copy()
     count = np.ones((n, n), dtype=np.int64)
     exclusive = np.zeros((n, n), dtype=bool)
-    centres = [_centre(site) for site in sites]
-    oxygens = [site.row.family in _families("delocalised_acid") for site in sites]
-    for i in range(n - 1):
-        distance, number, along = _paths_from(graph, centres[i])
-        for j in range(i + 1, n):
-            other = centres[j]
-            bonds[i, j] = bonds[j, i] = distance[other]
-            conjugated[i, j] = conjugated[j, i] = along[other]
-            count[i, j] = count[j, i] = number[other]
-            acids[i, j] = acids[j, i] = oxygens[i] + oxygens[j]
-            if sites[i].kind != sites[j].kind:
-                base, acid = (sites[i], sites[j]) if sites[i].kind == "base" else (sites[j], sites[i])
-                shift = (
-                    0 < distance[other] <= _LONGEST_SHIFT
-                    and distance[other] % 2 == 0
-                    and along[other] == distance[other]
-                    and graph.kind[base.atom] in _ACCEPTORS
-                    and acid.row.family in _SHIFTING
-                )
-                exclusive[i, j] = exclusive[j, i] = shift or acid.atom in base.core
+    for (i, j), (pair, one_unit) in site_pairs(graph, sites).items():
+        for array, number in zip((bonds, conjugated, count, acids), pair, strict=True):
+            array[i, j] = array[j, i] = number
+        exclusive[i, j] = exclusive[j, i] = one_unit
     return Paths(bonds, conjugated, count, acids), exclusive if exclusive.any() else None

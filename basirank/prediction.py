@@ -15,8 +15,8 @@ from rdkit import Chem
 from .equilibrium import Equilibrium, SiteSet, equilibrate
 from .forms import form_smiles
 from .graph import Graph, build_graph
-from .increments import Estimate, Term, site_terms
-from .interactions import coupling_matrix, find_paths, law
+from .increments import Estimate, Term, site_terms, sum_of
+from .interactions import couple
 from .residual import corrections
 from .sites import Site, find_sites
 from .structures import Parent, Refusal, read_parent
@@ -75,16 +75,14 @@ class Lines:
         Sites within reach of the reported range, in canonical order.
     terms : tuple of tuple of Term
         Terms of each site's line.
+    values : tuple of float
+        Line value of each site [-].
     """
 
     graph: Graph
     sites: tuple[Site, ...]
     terms: tuple[tuple[Term, ...], ...]
-
-    @property
-    def values(self) -> list[float]:
-        """Line value of each site [-]."""
-        return [sum(term.value for term in terms) for terms in self.terms]
+    values: tuple[float, ...]
 
 
 def site_lines(parent: Parent) -> Lines:
@@ -97,15 +95,16 @@ def site_lines(parent: Parent) -> Lines:
     """
     graph = build_graph(parent.mol)
     substituents = Substituents(graph)
-    sites, itemised = [], []
+    sites, itemised, values = [], [], []
     for site in find_sites(parent.mol, graph, parent.output_order):
         terms = site_terms(substituents, site)
-        value = sum(term.value for term in terms)
+        value = sum_of(terms)
         if (value > HIGHEST + _MARGIN) if site.kind == "acid" else (value < LOWEST - _MARGIN):
             continue
         sites.append(site)
         itemised.append(terms)
-    return Lines(graph, tuple(sites), tuple(itemised))
+        values.append(value)
+    return Lines(graph, tuple(sites), tuple(itemised), tuple(values))
 
 
 def estimates_of(batch: Sequence[Lines]) -> list[tuple[Estimate, ...]]:
@@ -138,12 +137,12 @@ def estimates_of(batch: Sequence[Lines]) -> list[tuple[Estimate, ...]]:
 
 def site_set(lines: Lines, estimates: Sequence[Estimate]) -> SiteSet:
     """Sites of one parent as the equilibrium takes them, with their couplings."""
-    paths, exclusive = find_paths(lines.graph, lines.sites)
+    coupling, exclusive = couple(lines.graph, lines.sites)
     return SiteSet(
         kinds=[site.kind for site in lines.sites],
         pk=[estimate.value for estimate in estimates],
         half_width=[estimate.half_width for estimate in estimates],
-        coupling=coupling_matrix(paths, law()),
+        coupling=coupling,
         exclusive=exclusive,
         fixed_charge=sum(lines.graph.charge),
     )
@@ -165,14 +164,13 @@ def predict(structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,
         In the order of `structures`; a structure that can't be computed is `refused` with its reason.
     """
     predictions: dict[int, Prediction] = {}
-    ready: list[tuple[int, Parent, Lines]] = []
+    parents: list[tuple[int, Parent]] = []
     for index, structure in enumerate(structures):
         try:
-            parent = read_parent(structure)
+            parents.append((index, read_parent(structure)))
         except Refusal as reason:
             predictions[index] = Prediction("refused", str(reason), None, (), None, None, ())
-            continue
-        ready.append((index, parent, site_lines(parent)))
+    ready = [(index, parent, site_lines(parent)) for index, parent in parents]
     estimates = estimates_of([lines for *_, lines in ready])
     sets = [site_set(lines, found) for (*_, lines), found in zip(ready, estimates, strict=True)]
     for (index, parent, _), found, sites, equilibrium in zip(ready, estimates, sets, equilibrate(sets, ph), strict=True):

@@ -10,17 +10,19 @@ from __future__ import annotations
 
 import json
 import math
+from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cache
 from importlib.resources import as_file, files
+from itertools import chain
 
 import numpy as np
 from numpy.typing import NDArray
 
 from .graph import Graph
 from .sites import Site
-from .surroundings import REACH, Piece, Surroundings, site_counts, spelled, weighted
+from .surroundings import Piece, Surroundings, site_counts, spelled, weighted
 from .tables import read_table
 
 __all__ = ["BLOCK", "Correction", "Kernel", "corrections", "group_of", "model", "site_counts", "weighted"]
@@ -141,13 +143,14 @@ class Group:
     """Trained arrays of one group: its basis sites, their weights and the matrix of the variance.
 
     `features` has a row for each feature known in the group and a column for each basis site; `copies` gives for the
-    row of a feature those of its second, third, ... copy. `read` remembers pieces met before: distance, number of
-    features, and rows of those that are known.
+    row of a feature those of its second, third, ... copy. `fade` is the weight of a feature per bond; `read` remembers
+    pieces met before.
     """
 
     vocabulary: dict[str, int]
     copies: dict[int, tuple[int, ...]]
-    read: dict[Piece, tuple[int, int, tuple[int, ...]]]
+    fade: float
+    read: dict[Piece, tuple[float, tuple[int, ...]]]
     features: NDArray[np.float32]
     total: Floats
     value: Floats
@@ -156,31 +159,25 @@ class Group:
     weights: Floats
     explained: NDArray[np.float32]
 
-    def look_up(self, piece: Piece) -> tuple[int, int, tuple[int, ...]]:
-        """Distance, number of features and known rows of a piece, remembered."""
+    def look_up(self, piece: Piece) -> tuple[float, tuple[int, ...]]:
+        """Weight of the features of a piece and rows of those that are known, remembered."""
         if len(self.read) >= _MOST_READ:
             self.read.clear()
         features = spelled(piece)
         known = tuple(self.vocabulary[feature] for feature in features if feature in self.vocabulary)
-        self.read[piece] = found = (int(features[0][0]), len(features), known)
+        self.read[piece] = found = (len(features) * self.fade ** int(features[0][0]), known)
         return found
 
-    def rows(self, pieces: Sequence[Piece]) -> tuple[list[int], list[int]]:
-        """Rows of the features that pieces show, copies included, and the number of features at each distance."""
-        tally = [0] * (REACH + 1)
-        counts: dict[int, int] = {}
-        read = self.read
-        for piece in pieces:
-            away, number, known = read.get(piece) or self.look_up(piece)
-            tally[away] += number
-            for row in known:
-                counts[row] = counts.get(row, 0) + 1
+    def rows(self, pieces: Sequence[Piece]) -> tuple[list[int], float]:
+        """Rows of the features that pieces show, copies included, and the weight of all features."""
+        read, copies = self.read, self.copies
+        found = [read.get(piece) or self.look_up(piece) for piece in pieces]
         rows = []
-        for row, count in counts.items():
+        for row, count in Counter(chain.from_iterable([known for _, known in found])).items():
             rows.append(row)
-            if count > 1 and row in self.copies:
-                rows += self.copies[row][: count - 1]
-        return rows, tally
+            if count > 1 and row in copies:
+                rows += copies[row][: count - 1]
+        return rows, sum([weight for weight, _ in found])
 
 
 def _copies(vocabulary: dict[str, int]) -> dict[int, tuple[int, ...]]:
@@ -229,6 +226,7 @@ def model() -> Model:
             groups[name] = Group(
                 vocabulary,
                 _copies(vocabulary),
+                settings["kernel"]["fade"],
                 {},
                 features,
                 *(part[field] for field in ("total", "value", "site_class", "family", "weights", "explained")),
@@ -302,12 +300,10 @@ def _block(
     overlap = np.zeros((filled, len(group.total)), dtype=np.float32)
     total, value = np.ones(filled), np.zeros(filled)
     site_class, family = np.full(filled, -1), np.full(filled, -1)
-    fade = [trained.kernel.fade**away for away in range(REACH + 1)]
     for row, (surroundings, site) in enumerate(zip(around, sites, strict=True)):
-        rows, tally = group.rows(surroundings.pieces(site.atom))
+        rows, total[row] = group.rows(surroundings.pieces(site.atom))
         if rows:
             np.add.reduce(group.features.take(rows, axis=0), axis=0, out=overlap[row])
-        total[row] = sum(number * weight for number, weight in zip(tally, fade, strict=True))
         site_class[row] = trained.classes.get(site.site_class, -1)
         family[row] = trained.families.get(site.row.family, -1)
     value[: len(values)] = values

@@ -16,6 +16,7 @@ from typing import Literal
 from rdkit import Chem
 
 from .graph import Graph
+from .screens import Screen
 from .tables import read_table
 
 Kind = Literal["base", "acid"]
@@ -83,6 +84,10 @@ class Site:
     row: SiteClass
 
 
+Shortlist = tuple[list[tuple[int, SiteClass]], list[int]]
+"""Rows with their places in the table; for each atom the rows (bits) of which it may be a centre."""
+
+
 @cache
 def site_classes() -> tuple[SiteClass, ...]:
     """Rows of `site_classes.csv` in order, patterns parsed."""
@@ -112,24 +117,33 @@ def site_classes() -> tuple[SiteClass, ...]:
 
 
 @cache
-def _rows(acid: bool) -> tuple[tuple[SiteClass, frozenset[str]], ...]:
-    """Rows for one pass, each with the kinds of nitrogen among its needs."""
-    return tuple(
-        (row, frozenset(kind for kind in row.needs if kind[0] in "Nn"))
-        for row in site_classes()
-        if (row.kind == "acid") == acid
-    )
+def _screen() -> Screen:
+    """Screen of all rows, centred on the nitrogens that a row accounts for or the atom of an acid."""
+    last = {"acid": 1}
+    centres = [[q for q, role in row.roles if role <= last.get(row.kind, _LAST_ACCOUNTED)] for row in site_classes()]
+    return Screen([row.pattern for row in site_classes()], centres)
 
 
-def _matches(mol: Chem.Mol, row: SiteClass) -> Iterable[tuple[int, ...]]:
-    return mol.GetSubstructMatches(row.pattern, uniquify=False, maxMatches=10_000)
+def _shortlist(graph: Graph) -> Shortlist:
+    """Rows that may match, their cheap needs met too."""
+    rows, kinds = site_classes(), set(graph.kind)
+    places, centres = _screen().shortlist(graph)
+    return [(place, rows[place]) for place in places if rows[place].needs <= kinds], centres
+
+
+def _matches(mol: Chem.Mol, row: SiteClass) -> tuple[tuple[int, ...], ...]:
+    found: tuple[tuple[int, ...], ...] = mol.GetSubstructMatches(row.pattern, uniquify=False, maxMatches=10_000)
+    return found
+
+
+def _site_atom(row: SiteClass, match: tuple[int, ...]) -> int:
+    return next(match[query] for query, role in row.roles if role == 1)
 
 
 def _site(row: SiteClass, match: tuple[int, ...]) -> Site:
     anchors = tuple(sorted((role, match[query]) for query, role in row.roles if role <= _LAST_ANCHOR))
-    atom = next(index for role, index in anchors if role == 1)
     core = tuple(match[query] for query, _ in row.roles)
-    return Site(atom, "acid" if row.kind == "acid" else "base", row.name, core, anchors, row)
+    return Site(_site_atom(row, match), "acid" if row.kind == "acid" else "base", row.name, core, anchors, row)
 
 
 def classify_nitrogens(mol: Chem.Mol, graph: Graph) -> tuple[dict[int, str], list[Site]]:
@@ -149,18 +163,20 @@ def classify_nitrogens(mol: Chem.Mol, graph: Graph) -> tuple[dict[int, str], lis
     sites : list of Site
         Base sites in the order of the table (a site on O, S or C stands with the nitrogen that feeds it).
     """
-    kinds = set(graph.kind)
-    open_nitrogen: dict[int, str] = {atom: kind for atom, kind in enumerate(graph.kind) if graph.element[atom] == 7}
-    open_kinds = set(open_nitrogen.values())
+    return _bases(mol, graph, _shortlist(graph))
+
+
+def _bases(mol: Chem.Mol, graph: Graph, shortlist: Shortlist) -> tuple[dict[int, str], list[Site]]:
+    open_nitrogen = {atom for atom, element in enumerate(graph.element) if element == 7}
+    rows, centres = shortlist
     classes: dict[int, str] = {}
     sites: dict[int, Site] = {}
-    for row, nitrogen_kinds in _rows(acid=False):
-        if not open_nitrogen:
-            break
-        if not row.needs <= kinds or (nitrogen_kinds and nitrogen_kinds.isdisjoint(open_kinds)):
+    for place, row in rows:
+        if row.kind == "acid" or not any([centres[atom] >> place & 1 for atom in open_nitrogen]):
             continue
+        matches = _matches(mol, row)
         accounted: dict[int, str] = {}
-        for match in _matches(mol, row):
+        for match in matches:
             fresh = [
                 match[query]
                 for query, role in row.roles
@@ -169,40 +185,40 @@ def classify_nitrogens(mol: Chem.Mol, graph: Graph) -> tuple[dict[int, str], lis
             if not fresh:
                 continue
             if row.kind == "base":
-                site = _site(row, match)
-                if site.atom in sites or (graph.element[site.atom] == 7 and site.atom not in open_nitrogen):
+                atom = _site_atom(row, match)
+                if atom in sites or (graph.element[atom] == 7 and atom not in open_nitrogen):
                     continue
-                accounted.update(dict.fromkeys(fresh, row.name))
-                sites[site.atom] = site
-            else:
-                accounted.update(dict.fromkeys(fresh, row.name))
+                sites[atom] = _site(row, match)
+            accounted.update(dict.fromkeys(fresh, row.name))
         # one site can be matched in several equivalent ways: the nitrogens of all of them are accounted for
         if accounted and row.kind == "base":
-            for match in _matches(mol, row):
+            for match in matches:
                 for query, role in row.roles:
                     if role <= _LAST_ACCOUNTED and match[query] in open_nitrogen:
                         accounted.setdefault(match[query], row.name)
-        if accounted:
-            classes.update(accounted)
-            for atom in accounted:
-                open_nitrogen.pop(atom, None)
-            open_kinds = set(open_nitrogen.values())
+        classes.update(accounted)
+        open_nitrogen.difference_update(accounted)
+        if not open_nitrogen:
+            break
     return classes, list(sites.values())
 
 
 def acid_sites(mol: Chem.Mol, graph: Graph) -> list[Site]:
     """Acid sites of the neutral parent, one for each atom that can give a proton."""
-    kinds = set(graph.kind)
+    return _acids(mol, _shortlist(graph))
+
+
+def _acids(mol: Chem.Mol, shortlist: Shortlist) -> list[Site]:
+    rows, centres = shortlist
     sites: dict[int, Site] = {}
-    for row, _ in _rows(acid=True):
-        if not row.needs <= kinds:
+    for place, row in rows:
+        # where every atom that may be the site is one already, there is nothing to find
+        if row.kind != "acid" or all([atom in sites for atom, bits in enumerate(centres) if bits >> place & 1]):
             continue
-        found: dict[int, Site] = {}
         for match in _matches(mol, row):
-            site = _site(row, match)
-            if site.atom not in sites and site.atom not in found:
-                found[site.atom] = site
-        sites.update(found)
+            atom = _site_atom(row, match)
+            if atom not in sites:
+                sites[atom] = _site(row, match)
     return list(sites.values())
 
 
@@ -224,5 +240,6 @@ def find_sites(mol: Chem.Mol, graph: Graph, order: Iterable[int]) -> list[Site]:
         Sorted by the canonical position of the site atom; of two sites on one atom the base comes first.
     """
     position = {atom: place for place, atom in enumerate(order)}
-    sites = classify_nitrogens(mol, graph)[1] + acid_sites(mol, graph)
+    shortlist = _shortlist(graph)
+    sites = _bases(mol, graph, shortlist)[1] + _acids(mol, shortlist)
     return sorted(sites, key=lambda site: (position[site.atom], site.kind == "acid"))

@@ -1,217 +1,43 @@
-"""Substituent constants: a group is spelled by walking the graph out from its point of attachment, then looked up.
+"""Substituents as a site sees them: walks from an anchor along saturated chains and around aromatic rings.
 
-The table holds Hammett, Taft and Charton constants by group. A group that is not in the table gets constants
-built from its atoms (an additive estimate that fades along the chain), and says so: no substituent ever counts as
-hydrogen in silence.
+Along a chain the effect of a group fades by a constant factor for each carbon; around a ring it is passed on by
+position, and in fused rings by distance and parity of the path. The constants of the groups are those of `groups`.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass
-from functools import cache
+from functools import cache, lru_cache
+from typing import NamedTuple
 
-from rdkit import Chem
+from .graph import AROMATIC, Graph, Star, star_parts
+from .groups import Group, Substituents, scales, spell
 
-from .graph import Graph, build_graph
-from .tables import read_table, read_toml
-
-_ORDER_MARK = {1: "-", 2: "=", 3: "#", 4: ":"}
-
-
-@dataclass(frozen=True, slots=True)
-class Group:
-    """Constants of one substituent.
-
-    Attributes
-    ----------
-    name : str
-        Name in the table, or the spelling of the group with the word "estimated".
-    sigma_meta, sigma_para, sigma_minus : float
-        Hammett constants; `sigma_minus` is the para constant in conjugation with an amino or oxido group [-].
-    sigma_star : float
-        Taft's polar constant of the group attached directly (CH3 = 0) [-].
-    sigma_i, sigma_r : float
-        Inductive and resonance constants [-].
-    steric : float
-        Charton's steric parameter [-].
-    source : str
-        Where the constants were taken from.
-    estimated : bool
-        Built from atoms, not found in the table.
-    """
-
-    name: str
-    sigma_meta: float
-    sigma_para: float
-    sigma_minus: float
-    sigma_star: float
-    sigma_i: float
-    sigma_r: float
-    steric: float
-    source: str
-    estimated: bool = False
+__all__ = ["ChainHit", "Group", "RingHit", "Substituents", "chain_walk", "ring_walk", "spell"]
 
 
 @cache
-def _scales() -> dict[str, float]:
-    """Relations between the scales of substituent constants."""
-    return {name: row["value"] for name, row in read_toml("scales.toml").items()}
+def _walking() -> tuple[float, float, float]:
+    """Attenuation by one bond, smallest share that is followed, and sigma* by sigma_I."""
+    relation = scales()
+    return relation["attenuation"], relation["smallest_share"], relation["sigma_star_per_sigma_i"]
 
 
-def spell(graph: Graph, atom: int, origin: int, order: int, depth: int) -> str:
-    """Spell a substituent: kind of atom, hydrogen, bond orders and neighbours, `depth` bonds out.
+class ChainHit(NamedTuple):
+    """One group met on a walk along saturated carbon: its atoms, its distance and what is left of its effect.
 
-    The last layer holds only the kind of atom, so that a row of the table stands for all its homologues. Atoms of
-    three- and four-membered rings carry the size of their ring: a cyclopropyl isn't an isopropyl.
-    """
-    kind = graph.kind[atom]
-    if depth == 1:
-        return _ORDER_MARK[order] + kind
-    if graph.atom_rings[atom] and graph.smallest_ring(atom) < 5:
-        kind += f"/{graph.smallest_ring(atom)}"
-    branches = sorted(
-        spell(graph, other, atom, other_order, depth - 1)
-        for other, other_order in graph.neighbours[atom]
-        if other != origin
-    )
-    return f"{_ORDER_MARK[order]}{kind}H{graph.hydrogens[atom]}({','.join(branches)})"
-
-
-def _complete(row: dict[str, str]) -> Group:
-    """Fill a row's empty cells from the relations between the scales."""
-    known = {name: float(text) for name, text in row.items() if text and name.startswith(("sigma", "steric"))}
-    scales = _scales()
-    meta, para, star = known.get("sigma_m"), known.get("sigma_p"), known.get("sigma_star")
-    inductive, resonance = known.get("sigma_i"), known.get("sigma_r")
-    share = scales["meta_resonance_share"]
-    if inductive is None:
-        if meta is not None and para is not None:
-            inductive = (meta - share * para) / (1.0 - share)
-        elif star is not None:
-            inductive = star / scales["sigma_star_per_sigma_i"]
-        else:
-            inductive = meta if meta is not None else 0.0
-    if resonance is None:
-        resonance = para - inductive if para is not None else 0.0
-    if meta is None:
-        meta = inductive + share * resonance
-    if para is None:
-        para = inductive + resonance
-    if star is None:
-        star = inductive * scales["sigma_star_per_sigma_i"]
-    minus = known.get("sigma_minus", para)
-    steric = known.get("steric", 0.6)
-    return Group(row["name"], meta, para, minus, star, inductive, resonance, steric, row["source"])
-
-
-@cache
-def group_table() -> tuple[dict[str, Group], ...]:
-    """Table of groups by depth of their spelling, deepest first."""
-    by_depth: dict[int, dict[str, Group]] = {}
-    for row in read_table("substituents.csv"):
-        mol = Chem.MolFromSmiles(row["smiles"])
-        graph = build_graph(mol)
-        (first, order), *more = graph.neighbours[0]
-        if more or mol.GetAtomWithIdx(0).GetAtomicNum() != 0:
-            raise ValueError(f"substituents.csv: {row['smiles']!r} must start at one point of attachment, `*`")
-        key = spell(graph, first, 0, order, int(row["depth"]))
-        by_depth.setdefault(int(row["depth"]), {})[key] = _complete(row)
-    return tuple(by_depth.get(depth, {}) for depth in range(max(by_depth), 0, -1))
-
-
-@cache
-def _atom_constants() -> dict[str, tuple[float, float]]:
-    """sigma_I and sigma_R by kind of the first atom, for groups that are not in the table."""
-    return {row["kind"]: (float(row["sigma_i"]), float(row["sigma_r"])) for row in read_table("atom_constants.csv")}
-
-
-def _atom_constant(graph: Graph, atom: int) -> tuple[float, float]:
-    """Constants of one kind of atom; an unlisted kind takes those of its element without the marks."""
-    table = _atom_constants()
-    kind = graph.kind[atom]
-    for name in (kind, kind.rstrip("+-"), "+" if "+" in kind else "other"):
-        if name in table:
-            return table[name]
-    return table["other"]
-
-
-def _estimate(graph: Graph, atom: int, origin: int, order: int) -> Group:
-    """Constants of an unlisted group from its atoms, each shell fading by the attenuation of one bond."""
-    scales = _scales()
-    inductive, resonance = _atom_constant(graph, atom)
-    shell, seen, fade = [(atom, origin)], {atom, origin}, 1.0
-    for _ in range(3):
-        fade *= scales["attenuation"]
-        following = []
-        for inner, behind in shell:
-            for other, _order in graph.neighbours[inner]:
-                if other != behind and other not in seen:
-                    seen.add(other)
-                    following.append((other, inner))
-                    inductive += fade * _atom_constant(graph, other)[0]
-        shell = following
-    meta = inductive + scales["meta_resonance_share"] * resonance
-    para = inductive + resonance
-    star = inductive * scales["sigma_star_per_sigma_i"]
-    name = f"{spell(graph, atom, origin, order, 2)[1:]} (estimated from its atoms)"
-    return Group(name, meta, para, para, star, inductive, resonance, 0.6, "derived: from its atoms", True)
-
-
-class Substituents:
-    """Groups of one molecule, recognised on demand and remembered.
-
-    Parameters
-    ----------
-    graph : Graph
-        Plain arrays of the molecule.
+    `on_ring` is the Hammett constant of a group that acts through an aromatic ring on the chain, else None.
     """
 
-    __slots__ = ("graph", "_groups")
-
-    def __init__(self, graph: Graph) -> None:
-        self.graph = graph
-        self._groups: dict[tuple[int, int], Group] = {}
-
-    def group(self, atom: int, origin: int, order: int = 1) -> Group:
-        """Group that starts at `atom`, seen from `origin`."""
-        found = self._groups.get((atom, origin))
-        if found is None:
-            found = _lookup(self.graph, atom, origin, order)
-            self._groups[atom, origin] = found
-        return found
-
-
-_SPELLED: dict[str, Group | None] = {}
-"""Groups already met, by their deepest spelling; emptied when it grows past a bound."""
-
-
-def _lookup(graph: Graph, atom: int, origin: int, order: int) -> Group:
-    tables = group_table()
-    deepest = spell(graph, atom, origin, order, len(tables))
-    if deepest in _SPELLED:
-        found = _SPELLED[deepest]
-    else:
-        found = None
-        for shallower, table in enumerate(tables):
-            depth = len(tables) - shallower
-            found = table.get(deepest if not shallower else spell(graph, atom, origin, order, depth))
-            if found is not None:
-                break
-        if len(_SPELLED) > 50_000:
-            _SPELLED.clear()
-        _SPELLED[deepest] = found
-    return found if found is not None else _estimate(graph, atom, origin, order)
-
-
-@dataclass(frozen=True, slots=True)
-class ChainHit:
-    """One group met on a walk along saturated carbon: its atoms, its distance and what is left of its effect."""
-
-    group: Group
+    carrier: Group
     atoms: tuple[int, ...]
     distance: int
     share: float
+    on_ring: float | None = None
+
+    @property
+    def group(self) -> Group:
+        """The group, with its constants as the ring passes them on if there is one between."""
+        return self.carrier if self.on_ring is None else _as_star(self.carrier, self.on_ring)
 
     @property
     def sigma_star(self) -> float:
@@ -220,12 +46,14 @@ class ChainHit:
         Past the first bond the group acts by its inductive constant alone, on the sigma* scale (Charton 1981);
         sigma* of an amino group measured in direct contact is too small for that.
         """
-        if self.distance == 1 or self.group.sigma_i == 0.0:
-            return self.group.sigma_star * self.share
-        return self.group.sigma_i * _scales()["sigma_star_per_sigma_i"] * self.share
+        if self.on_ring is not None:
+            return self.on_ring * self.share
+        if self.distance == 1 or self.carrier.sigma_i == 0.0:
+            return self.carrier.sigma_star * self.share
+        return self.carrier.sigma_i * _walking()[2] * self.share
 
 
-def chain_walk(substituents: Substituents, anchor: int, core: frozenset[int]) -> Iterator[ChainHit]:
+def chain_walk(substituents: Substituents, anchor: int, core: frozenset[int]) -> list[ChainHit]:
     """Groups met from an anchor outward, every simple path counted (a ring member is reached both ways).
 
     The effect of a group fades by `attenuation` for each saturated carbon between it and the anchor (Taft 1956).
@@ -239,72 +67,95 @@ def chain_walk(substituents: Substituents, anchor: int, core: frozenset[int]) ->
     core : frozenset of int
         Atoms of the site's own unit; no path enters them.
 
-    Yields
-    ------
-    ChainHit
+    Returns
+    -------
+    list of ChainHit
         Distance counts the bonds from the anchor to the group.
     """
-    graph = substituents.graph
-    fade = _scales()["attenuation"]
-    reach = _scales()["smallest_share"]
+    walk = _ChainWalk(substituents, core)
+    for other, order in substituents.graph.neighbours[anchor]:
+        if other not in core:
+            walk.follow(other, anchor, order, (other,), 1.0)
+    return walk.hits
 
-    def follow(atom: int, origin: int, order: int, path: tuple[int, ...], share: float) -> Iterator[ChainHit]:
+
+class _ChainWalk:
+    """One walk along saturated carbon; `hits` is what it has met."""
+
+    __slots__ = ("substituents", "graph", "core", "fade", "reach", "hits")
+
+    def __init__(self, substituents: Substituents, core: frozenset[int]) -> None:
+        self.substituents = substituents
+        self.graph = substituents.graph
+        self.core = core
+        self.fade, self.reach, _ = _walking()
+        self.hits: list[ChainHit] = []
+
+    def follow(self, atom: int, origin: int, order: int, path: tuple[int, ...], share: float) -> None:
+        """From one atom on, the last of the path."""
+        graph = self.graph
         if graph.kind[atom] == "C3" and not _is_halocarbon(graph, atom, origin):
-            share *= fade
-            if share < reach:
+            share *= self.fade
+            if share < self.reach:
                 return
+            core = self.core
             for other, other_order in graph.neighbours[atom]:
                 if other != origin and other not in path and other not in core:
-                    yield from follow(other, atom, other_order, (*path, other), share)
+                    self.follow(other, atom, other_order, (*path, other), share)
             return
-        group = substituents.group(atom, origin, order)
-        yield ChainHit(group, (atom,), len(path), share)
+        self.hits.append(ChainHit(self.substituents.group(atom, origin, order), (atom,), len(path), share))
         if graph.aromatic[atom]:
-            yield from _through_ring(substituents, atom, origin, core, len(path), share)
-        elif share * fade >= reach:
-            yield from _beyond(atom, origin, path, share * fade)
+            self._through_ring(atom, origin, len(path), share)
+        elif share * self.fade >= self.reach:
+            self._beyond(atom, origin, path, share * self.fade)
 
-    def _beyond(atom: int, origin: int, path: tuple[int, ...], share: float) -> Iterator[ChainHit]:
+    def _beyond(self, atom: int, origin: int, path: tuple[int, ...], share: float) -> None:
         """Past a functional group: its saturated neighbours, one bond weaker for each atom crossed."""
+        graph = self.graph
         edge = [(atom, origin, share)]
         crossed = {atom, *path}
         while edge:
             inner, behind, left = edge.pop()
+            if left < self.reach:
+                continue
             for other, order in graph.neighbours[inner]:
-                if other == behind or other in crossed or other in core or left < reach:
+                if other == behind or other in crossed or other in self.core:
                     continue
                 if graph.kind[other] == "C3":
                     if not _is_halocarbon(graph, other, inner):
-                        yield from follow(other, inner, order, (*path, other), left)
+                        self.follow(other, inner, order, (*path, other), left)
                 elif not graph.aromatic[other] and graph.element[inner] != 1:
                     crossed.add(other)
-                    edge.append((other, inner, left * fade))
+                    edge.append((other, inner, left * self.fade))
 
-    for other, order in graph.neighbours[anchor]:
-        if other not in core:
-            yield from follow(other, anchor, order, (other,), 1.0)
+    def _through_ring(self, atom: int, origin: int, distance: int, share: float) -> None:
+        """Substituents of an aromatic group, passed on to the chain by its transmission."""
+        passed = share * scales()["ring_transmission"]
+        for hit in ring_walk(self.substituents, atom, self.core | {origin}):
+            if hit.group is None:
+                continue
+            if hit.position == "ortho":
+                self.hits.append(ChainHit(hit.group, hit.atoms, distance + 1, passed, hit.group.sigma_para))
+            else:
+                sigma = hit.sigma_para if hit.alternant else hit.sigma_meta
+                self.hits.append(ChainHit(hit.group, hit.atoms, distance + hit.distance, passed, sigma))
+
+
+_HALOGENS = (9, 17, 35, 53)
+
+
+@lru_cache(maxsize=50_000)
+def _halogens(star: Star) -> int:
+    """Halogens on an atom."""
+    return sum(other.element in _HALOGENS for _, other in star_parts(star)[1])
 
 
 def _is_halocarbon(graph: Graph, atom: int, origin: int) -> bool:
     """A carbon whose other neighbours are two or more halogens (CHF2, CF3, CCl3): one group, not a chain."""
-    halogens = sum(graph.element[other] in (9, 17, 35, 53) for other, _ in graph.neighbours[atom] if other != origin)
-    return halogens >= 2
+    return _halogens(graph.star[atom]) - (graph.element[origin] in _HALOGENS) >= 2
 
 
-def _through_ring(
-    substituents: Substituents, atom: int, origin: int, core: frozenset[int], distance: int, share: float
-) -> Iterator[ChainHit]:
-    """Substituents of an aromatic group, passed on to the chain by its transmission."""
-    passed = share * _scales()["ring_transmission"]
-    for hit in ring_walk(substituents, atom, core | {origin}):
-        if hit.group is not None and hit.position != "ortho":
-            sigma = hit.sigma_para if hit.alternant else hit.sigma_meta
-            yield ChainHit(_as_star(hit.group, sigma), hit.atoms, distance + hit.distance, passed)
-        elif hit.group is not None:
-            yield ChainHit(_as_star(hit.group, hit.group.sigma_para), hit.atoms, distance + 1, passed)
-
-
-@cache
+@lru_cache(maxsize=10_000)
 def _as_star(group: Group, sigma: float) -> Group:
     """A ring substituent's Hammett constant, carried on the polar scale of the ring that passes it on."""
     return Group(
@@ -312,8 +163,7 @@ def _as_star(group: Group, sigma: float) -> Group:
     )
 
 
-@dataclass(frozen=True, slots=True)
-class RingHit:
+class RingHit(NamedTuple):
     """What an aromatic system carries at one of its atoms, seen from an anchor in it.
 
     `position` is ortho, meta, para or far; `feature` is "group", "aza", "pyrrole-type nitrogen", "chalcogen",
@@ -330,6 +180,11 @@ class RingHit:
     fade: float
 
     @property
+    def label(self) -> str:
+        """Where it stands, in words."""
+        return self.position if self.position != "far" else f"{self.distance} bonds round"
+
+    @property
     def sigma_meta(self) -> float:
         return self.group.sigma_meta * self.fade if self.group else 0.0
 
@@ -342,7 +197,7 @@ class RingHit:
         return self.group.sigma_minus * self.fade if self.group else 0.0
 
 
-def ring_walk(substituents: Substituents, anchor: int, core: frozenset[int]) -> Iterator[RingHit]:
+def ring_walk(substituents: Substituents, anchor: int, core: frozenset[int]) -> list[RingHit]:
     """Walk the aromatic system from an anchor in it and report substituents, ring nitrogens and fusions.
 
     Positions of the anchor's own six-membered ring are ortho, meta and para; those of fused rings are `far` and act
@@ -358,62 +213,65 @@ def ring_walk(substituents: Substituents, anchor: int, core: frozenset[int]) -> 
     core : frozenset of int
         Atoms of the site's own unit: walked through, not reported; their own substituents aren't reported either.
 
-    Yields
-    ------
-    RingHit
+    Returns
+    -------
+    list of RingHit
         In order of distance.
     """
     graph = substituents.graph
     own = {atom: len(graph.rings[ring]) for ring in graph.atom_rings[anchor] for atom in graph.rings[ring]}
-    far_fade = _scales()["far_fade"]
-    distance = {anchor: 0}
+    far_fade = scales()["far_fade"]
+    hits: list[RingHit] = []
+    reached = {anchor}
     edge = [anchor]
+    away = 0
     while edge:
+        away += 1
+        alternant = away % 2 == 1
         following = []
         for inner in edge:
             for other, order in graph.neighbours[inner]:
-                if order == 4 and other not in distance:
-                    distance[other] = distance[inner] + 1
+                if order == AROMATIC and other not in reached:
+                    reached.add(other)
                     following.append(other)
         for atom in following:
-            away = distance[atom]
+            if atom in core:
+                continue
             if atom in own:
                 position, fade = _POSITION.get(away, "para"), 1.0
                 if own[atom] == 5 and away == 2:
                     position = "meta"
             else:
                 position, fade = "far", far_fade ** (away - 2)
-            alternant = away % 2 == 1
-            if atom in core:
-                continue
-            feature = _ring_feature(graph, atom)
+            feature = _ring_feature(graph.star[atom])
             if feature:
-                yield RingHit(feature, None, (atom,), position, away, alternant, fade)
+                hits.append(RingHit(feature, None, (atom,), position, away, alternant, fade))
             for other, order in graph.neighbours[atom]:
-                if order == 4 or other in core:
+                if order == AROMATIC or other in core:
                     continue
+                group = None
                 if order == 2:
-                    yield RingHit(
-                        "oxo" if graph.element[other] == 8 else "thioxo", None, (other,), position, away, alternant, fade
-                    )
+                    feature = "oxo" if graph.element[other] == 8 else "thioxo"
                 else:
-                    group = substituents.group(other, atom, order)
-                    yield RingHit("group", group, (other,), position, away, alternant, fade)
+                    feature, group = "group", substituents.group(other, atom, order)
+                hits.append(RingHit(feature, group, (other,), position, away, alternant, fade))
         edge = following
+    return hits
 
 
 _POSITION = {1: "ortho", 2: "meta", 3: "para"}
 
 
-def _ring_feature(graph: Graph, atom: int) -> str:
+@lru_cache(maxsize=50_000)
+def _ring_feature(star: Star) -> str:
     """What the ring atom itself is, apart from a plain aromatic C-H or C-R."""
-    element = graph.element[atom]
-    if element == 7:
-        if graph.charge[atom] > 0:
+    atom, around = star_parts(star)
+    if atom.element == 7:
+        if atom.charge > 0:
             return "azinium"
-        return "pyrrole-type nitrogen" if len(graph.neighbours[atom]) + graph.hydrogens[atom] > 2 else "aza"
-    if element in (8, 16, 34):
+        return "pyrrole-type nitrogen" if atom.degree + atom.hydrogens > 2 else "aza"
+    if atom.element in (8, 16, 34):
         return "chalcogen"
-    if element == 6 and len(graph.neighbours[atom]) == 3 and all(order == 4 for _, order in graph.neighbours[atom]):
+    if atom.element == 6 and len(around) == 3 and all(order == AROMATIC for order, _ in around):
         return "fusion"
     return ""

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from functools import lru_cache
 
-from .graph import Graph
+from .graph import Graph, Star, star_parts, type_of
 from .sites import Site
 
 REACH = 7
@@ -17,7 +17,6 @@ REACH = 7
 
 _HYDROGEN_REACH = 5
 _PATH_REACH = 6
-_NEST = 3
 
 Path = tuple["Path", str, int] | None
 """Way from the site to an atom: the way so far, then the kind of atom and the bond order of one step."""
@@ -28,15 +27,23 @@ Piece = str | tuple[int, str] | tuple[int, str, Path] | tuple[int, str, str, int
 
 
 @lru_cache(maxsize=10_000)
-def _label(kind: str, in_ring: bool, hydrogens: int, degree: int) -> str:
+def _label(type_number: int, in_ring: bool) -> str:
     """Label of an atom: its kind (`r` for a saturated ring), hydrogens and neighbours."""
-    return f"{kind}{'r' if in_ring else ''} H{hydrogens} {degree}"
+    atom = type_of(type_number)
+    return f"{atom.kind}{'r' if in_ring else ''} H{atom.hydrogens} {atom.degree}"
 
 
 @lru_cache(maxsize=100_000)
 def _shell(own: str, around: tuple[tuple[int, str], ...]) -> str:
     """Spelling of an atom with the spellings of its neighbours: one shell more."""
     return f"{own}({','.join(sorted(f'{order}{text}' for order, text in around))})"
+
+
+@lru_cache(maxsize=100_000)
+def _first_shell(star: Star) -> str:
+    """Spelling of an atom with its neighbours."""
+    own, around = star_parts(star)
+    return _shell(f"{own.kind}H{own.hydrogens}", tuple([(order, f"{o.kind}H{o.hydrogens}") for order, o in around]))
 
 
 class Surroundings:
@@ -48,31 +55,29 @@ class Surroundings:
         Plain arrays of the molecule.
     """
 
-    __slots__ = ("graph", "_labels", "_shells")
+    __slots__ = ("graph", "_labels", "_second")
 
     def __init__(self, graph: Graph) -> None:
         self.graph = graph
         self._labels = [
-            _label(kind, bool(rings) and not aromatic, hydrogens, len(neighbours))
-            for kind, rings, aromatic, hydrogens, neighbours in zip(
-                graph.kind, graph.atom_rings, graph.aromatic, graph.hydrogens, graph.neighbours, strict=True
-            )
+            _label(star[0], size > 0 and not aromatic)
+            for star, size, aromatic in zip(graph.star, graph.ring_size, graph.aromatic, strict=True)
         ]
-        self._shells: tuple[dict[int, str], ...] = tuple({} for _ in range(_NEST + 1))
+        self._second: dict[int, str] = {}
 
-    def _nested(self, atom: int, shells: int) -> str:
-        """Spelling of an atom and so many shells around it."""
-        known = self._shells[shells]
-        text = known.get(atom)
+    def _second_shell(self, atom: int) -> str:
+        text = self._second.get(atom)
         if text is None:
-            if shells == 0:
-                text = f"{self.graph.kind[atom]}H{self.graph.hydrogens[atom]}"
-            else:
-                inner = shells - 1
-                around = tuple([(order, self._nested(other, inner)) for other, order in self.graph.neighbours[atom]])
-                text = _shell(self._nested(atom, inner), around)
-            known[atom] = text
+            star = self.graph.star
+            around = tuple([(order, _first_shell(star[other])) for other, order in self.graph.neighbours[atom]])
+            text = self._second[atom] = _shell(_first_shell(star[atom]), around)
         return text
+
+    def _nests(self, atom: int) -> tuple[str, str, str]:
+        """Spellings of an atom with one, two and three shells around it."""
+        second = self._second_shell(atom)
+        around = tuple([(order, self._second_shell(other)) for other, order in self.graph.neighbours[atom]])
+        return _first_shell(self.graph.star[atom]), second, _shell(second, around)
 
     def pieces(self, start: int) -> list[Piece]:
         """Pieces of the surroundings of one atom, each as often as it occurs."""
@@ -108,7 +113,7 @@ class Surroundings:
                     if other_kind != "C3" and other_kind != "c" and away <= _PATH_REACH:
                         found.append((away, other_kind, step))
             edge = following
-        found += [f"0 nest {self._nested(start, shells)}" for shells in range(1, _NEST + 1)]
+        found += [f"0 nest {text}" for text in self._nests(start)]
         return found
 
 

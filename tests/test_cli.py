@@ -133,7 +133,7 @@ def test_rank_shows_an_aligned_table(run):
     assert lines[2].split()[:2] == ["1", "CCN"] and lines[3].split()[:2] == ["2", "pyridine"]
     assert "no basic site" in lines[4] and "refused" in lines[5]
     assert result.stdout.count("not measurements") == 1
-    assert "spread of each site class" in result.stdout
+    assert "calibrated on measured compounds" in result.stdout
 
 
 @pytest.mark.parametrize("width", [40, 60, 80, 120, 200])
