@@ -62,7 +62,7 @@ def records_of(structures: Sequence[object], ph: Sequence[float]) -> list[Record
 
 @contextmanager
 def _collector_at_rest() -> Iterator[None]:
-    """No search for reference cycles in here: a chunk makes none, and looking at all its objects costs a tenth."""
+    """No search for reference cycles in here: a chunk makes none, and looking at its objects costs time."""
     running = gc.isenabled()
     gc.disable()
     try:

@@ -19,7 +19,7 @@ _ORDER = {1.0: 1, 2.0: 2, 3.0: 3, 1.5: AROMATIC}
 """Order code by RDKit's bond type as a number, which is cheaper to ask for than the type."""
 
 Star = tuple[int, ...]
-"""An atom's type, then for each neighbour, sorted, its type and bond order in one number (see `star_parts`)."""
+"""An atom's type, then for each neighbour, sorted, type and bond order in one number (see `star_parts`)."""
 
 _SYMBOL = Chem.GetPeriodicTable().GetElementSymbol
 
@@ -100,8 +100,8 @@ class AtomType:
     degree: int
 
 
-# Types are numbered as they are met; there are a few hundred in chemistry, so the list stays short. The numbers
-# differ from run to run and serve only to compare and to remember.
+# Types are numbered as they are met; there are a few hundred in chemistry, so the list stays short. The
+# numbers differ from run to run and serve only to compare and to remember.
 _TYPES: list[AtomType] = []
 _TYPE_NUMBERS: dict[tuple[int, bool, int, str, int, int], int] = {}
 
@@ -176,7 +176,8 @@ def build_graph(mol: Chem.Mol) -> Graph:
             atom_rings[atom].append(position)
             if not 0 < ring_size[atom] <= size:
                 ring_size[atom] = size
-    types = list(map(_type_number, zip(element, aromatic, charge, kind, hydrogens, map(len, neighbours), strict=True)))
+    degree = map(len, neighbours)
+    types = list(map(_type_number, zip(element, aromatic, charge, kind, hydrogens, degree, strict=True)))
     if len(_STARS) > _MOST_STARS:
         _STARS.clear()
     star = []

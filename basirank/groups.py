@@ -38,6 +38,8 @@ class Group:
         Where the constants were taken from.
     estimated : bool
         Built from atoms, not found in the table.
+    sigma_ortho : float
+        Apparent ortho constant at an azine nitrogen, on the scale 5.25 - 5.90 sigma [-].
     """
 
     name: str
@@ -50,6 +52,7 @@ class Group:
     steric: float
     source: str
     estimated: bool = False
+    sigma_ortho: float = 0.0
 
 
 @cache
@@ -58,17 +61,22 @@ def scales() -> dict[str, float]:
     return {name: row["value"] for name, row in read_toml("scales.toml").items()}
 
 
+def _small_ring(graph: Graph, atom: int) -> int:
+    """Ring size that a spelling shows: three or four, at a saturated atom."""
+    return graph.ring_size[atom] if graph.ring_size[atom] < 5 and graph.kind[atom].endswith("3") else 0
+
+
 def spell(graph: Graph, atom: int, origin: int, order: int, depth: int) -> str:
     """Spell a substituent: kind of atom, hydrogen, bond orders and neighbours, `depth` bonds out.
 
-    The last layer holds only the kind of atom, so that a row of the table stands for all its homologues. Atoms of
-    three- and four-membered rings carry the size of their ring: a cyclopropyl isn't an isopropyl.
+    The last layer holds only the kind of atom, so that a row of the table stands for all its homologues. Saturated atoms
+    of three- and four-membered rings carry the size of their ring: a cyclopropyl isn't an isopropyl.
     """
     kind = graph.kind[atom]
     if depth == 1:
         return _ORDER_MARK[order] + kind
-    if graph.atom_rings[atom] and graph.smallest_ring(atom) < 5:
-        kind += f"/{graph.smallest_ring(atom)}"
+    if _small_ring(graph, atom):
+        kind += f"/{_small_ring(graph, atom)}"
     branches = sorted(
         spell(graph, other, atom, other_order, depth - 1)
         for other, other_order in graph.neighbours[atom]
@@ -99,9 +107,16 @@ def _complete(row: dict[str, str]) -> Group:
         para = inductive + resonance
     if star is None:
         star = inductive * relation["sigma_star_per_sigma_i"]
-    minus = known.get("sigma_minus", para)
+    # only an acceptor is in stronger conjugation with an amino or oxido group than sigma_para says
+    minus = known.get("sigma_minus", para) if resonance >= 0.0 else para
     steric = known.get("steric", 0.6)
-    return Group(row["name"], meta, para, minus, star, inductive, resonance, steric, row["source"])
+    ortho = known.get("sigma_o", ortho_constant(inductive, resonance))
+    return Group(row["name"], meta, para, minus, star, inductive, resonance, steric, row["source"], False, ortho)
+
+
+def ortho_constant(inductive: float, resonance: float) -> float:
+    """Apparent ortho constant at an azine nitrogen from sigma_I and sigma_R (Charton 1971) [-]."""
+    return scales()["ortho_inductive"] * inductive + scales()["ortho_resonance"] * resonance
 
 
 @cache
@@ -115,7 +130,10 @@ def group_table() -> tuple[dict[str, Group], ...]:
         if more or mol.GetAtomWithIdx(0).GetAtomicNum() != 0:
             raise ValueError(f"substituents.csv: {row['smiles']!r} must start at one point of attachment, `*`")
         key = spell(graph, first, 0, order, int(row["depth"]))
-        by_depth.setdefault(int(row["depth"]), {})[key] = _complete(row)
+        same_depth = by_depth.setdefault(int(row["depth"]), {})
+        if key in same_depth:
+            raise ValueError(f"substituents.csv: {row['name']!r} is spelled like {same_depth[key].name!r}")
+        same_depth[key] = _complete(row)
     return tuple(by_depth.get(depth, {}) for depth in range(max(by_depth), 0, -1))
 
 
@@ -154,7 +172,8 @@ def _estimate(graph: Graph, atom: int, origin: int, order: int) -> Group:
     para = inductive + resonance
     star = inductive * relation["sigma_star_per_sigma_i"]
     name = f"{spell(graph, atom, origin, order, 2)[1:]} (estimated from its atoms)"
-    return Group(name, meta, para, para, star, inductive, resonance, 0.6, "derived: from its atoms", True)
+    ortho = ortho_constant(inductive, resonance)
+    return Group(name, meta, para, para, star, inductive, resonance, 0.6, "derived: from its atoms", True, ortho)
 
 
 class Substituents:
@@ -166,7 +185,7 @@ class Substituents:
         Plain arrays of the molecule.
     """
 
-    __slots__ = ("graph", "_groups")
+    __slots__ = ("_groups", "graph")
 
     def __init__(self, graph: Graph) -> None:
         self.graph = graph
@@ -183,7 +202,7 @@ class Substituents:
 
 @cache
 def _spelled_further() -> tuple[frozenset[str], ...]:
-    """By depth (0 unused), the spellings to which some deeper row of the table belongs, so that it pays to go on."""
+    """By depth (0 unused), the spellings to which some deeper row of the table belongs: it pays to go on."""
     further: list[set[str]] = [set() for _ in range(len(group_table()) + 1)]
     for row in read_table("substituents.csv"):
         graph = build_graph(Chem.MolFromSmiles(row["smiles"]))
@@ -201,12 +220,8 @@ _NEAR: dict[Near, tuple[Group | None, int]] = {}
 Emptied when it grows past a bound."""
 
 
-def _small_ring(graph: Graph, atom: int) -> int:
-    return graph.ring_size[atom] if graph.ring_size[atom] < 5 else 0
-
-
 def _search(graph: Graph, atom: int, origin: int, order: int, last: int) -> tuple[Group | None, int]:
-    """Deepest row that spells the group, down to the depth `last`, and the depth at which to go on (0: nowhere)."""
+    """Deepest row that spells the group, down to `last`, and the depth at which to go on (0: nowhere)."""
     tables, further = group_table(), _spelled_further()
     found = None
     for depth in range(1, last + 1):
@@ -220,8 +235,8 @@ def _search(graph: Graph, atom: int, origin: int, order: int, last: int) -> tupl
 def _lookup(graph: Graph, atom: int, origin: int, order: int) -> Group:
     """Deepest row of the table that spells the group, else an estimate from its atoms.
 
-    Spelled from the shallow end: few groups have rows deeper than two or three bonds, and so far the answer is
-    remembered by the stars of the atoms (which decide the spelling).
+    Spelled from the shallow end: few groups have rows deeper than two or three bonds, and so far the answer
+    is remembered by the stars of the atoms (which decide the spelling).
     """
     star = graph.star
     way_in = star[origin][0] << 3 | order
@@ -230,7 +245,8 @@ def _lookup(graph: Graph, atom: int, origin: int, order: int) -> Group:
     if answer is None:
         answer = _remember(near, _search(graph, atom, origin, order, 2))
     if answer[1]:
-        around = [(o, star[other], _small_ring(graph, other)) for other, o in graph.neighbours[atom] if other != origin]
+        beyond = [(o, other) for other, o in graph.neighbours[atom] if other != origin]
+        around = [(o, star[other], _small_ring(graph, other)) for o, other in beyond]
         near = (star[atom], way_in, near[2], tuple(around))
         answer = _NEAR.get(near)
         if answer is None:

@@ -18,7 +18,6 @@ from .sites import Site, SiteClass
 from .substituents import ChainHit, RingHit, Substituents, chain_walk, ring_walk
 from .tables import read_model_table, read_table
 
-
 Label = str | tuple[Any, ...]
 """Text, or a format string and what goes into it: put into words only when somebody reads the term."""
 
@@ -115,7 +114,7 @@ Describe = Callable[["SiteWalks", int], Iterable[Descriptor]]
 class SiteWalks:
     """Walks from the anchors of one site, made on demand and shared by its terms."""
 
-    __slots__ = ("substituents", "graph", "core", "_chain", "_ring", "_direct")
+    __slots__ = ("_chain", "_direct", "_ring", "core", "graph", "substituents")
 
     def __init__(self, substituents: Substituents, site: Site) -> None:
         self.substituents = substituents
@@ -133,7 +132,7 @@ class SiteWalks:
         return hits
 
     def ring(self, anchor: int, feature: str, position: str) -> Sequence[RingHit]:
-        """What of one sort the aromatic system carries at a position; "" for all but ortho, in order of distance."""
+        """What of one sort the aromatic system carries at a position ("": all but ortho), by distance."""
         hits = self._ring.get(anchor)
         if hits is None:
             hits = self._ring[anchor] = {}
@@ -246,7 +245,8 @@ def _ortho(constant: str, label: str) -> Describe:
 
 
 def _feature(feature: str, position: str, distance: int = 0) -> Describe:
-    label = f"{feature} ({position})" if position != "far" else feature + " (fused ring, {0.distance} bonds away)"
+    place = position if position != "far" else "fused ring, {0.distance} bonds away"
+    label = f"{feature} ({place})"
 
     def descriptor(walks: SiteWalks, anchor: int) -> list[Descriptor]:
         return [
@@ -294,6 +294,7 @@ TERMS: dict[str, Describe] = {
     "hammett_minus": _hammett("sigma_minus"),
     "ortho_i": _ortho("sigma_i", "sigma_I"),
     "ortho_r": _ortho("sigma_r", "sigma_R"),
+    "ortho": _ortho("sigma_ortho", "ortho constant"),
     "ortho_n": _ortho("", "place"),
     **_feature_terms(),
 }

@@ -41,6 +41,10 @@ class Law:
         Share that each further shortest path adds [-].
     acid_share : float
         Factor for each acid whose anion is shared by its oxygens [-].
+    ring : ndarray, shape (3,)
+        W of two nitrogens of one aromatic ring, neighbours, 1,3 and 1,4 [pK units].
+    shared_proton : float
+        Added where geometry holds one proton between the two sites [pK units].
     """
 
     saturated: NDArray[np.float64]
@@ -48,6 +52,8 @@ class Law:
     beyond: float
     parallel_paths: float
     acid_share: float
+    ring: NDArray[np.float64]
+    shared_proton: float
 
 
 @cache
@@ -60,6 +66,8 @@ def prior_law() -> Law:
         table["beyond"]["value"],
         table["parallel_paths"]["value"],
         table["delocalised_acid"]["value"],
+        np.array(table["same_ring"]["values"]),
+        table["shared_proton"]["value"],
     )
 
 
@@ -78,6 +86,8 @@ def law() -> Law:
         prior.beyond,
         refined.get(("parallel", 0), prior.parallel_paths),
         refined.get(("acid share", 0), prior.acid_share),
+        updated("ring", prior.ring),
+        prior.shared_proton,
     )
 
 
@@ -91,12 +101,15 @@ class Paths:
         Bonds on a shortest path (0: the same atom), how many of them are conjugated, number of shortest paths.
     acids : ndarray of int, shape (n, n)
         Number of sites of the pair whose anion is shared by its oxygens.
+    special : ndarray of int, shape (n, n)
+        1 for two nitrogens of one aromatic ring, 2 for two sites that hold one proton between them, else 0.
     """
 
     bonds: NDArray[np.int64]
     conjugated: NDArray[np.int64]
     count: NDArray[np.int64]
     acids: NDArray[np.int64]
+    special: NDArray[np.int64]
 
 
 def coupling_matrix(paths: Paths, rule: Law) -> NDArray[np.float64]:
@@ -118,7 +131,7 @@ def coupling_matrix(paths: Paths, rule: Law) -> NDArray[np.float64]:
     --------
     >>> one = np.array([[0, 3], [3, 0]])
     >>> none = np.zeros((2, 2), dtype=int)
-    >>> float(coupling_matrix(Paths(one, none, none + 1, none), prior_law())[0, 1])  # 1,2-diaminoethane
+    >>> float(coupling_matrix(Paths(one, none, none + 1, none, none), prior_law())[0, 1])  # 1,2-diaminoethane
     2.5
     """
     listed = len(rule.saturated)
@@ -128,7 +141,15 @@ def coupling_matrix(paths: Paths, rule: Law) -> NDArray[np.float64]:
     near = single * (1.0 + rule.parallel_paths * (1.0 - share) * (paths.count - 1))
     far = rule.beyond * (listed / np.maximum(paths.bonds, 1)) ** 2
     coupling = np.where(paths.bonds > listed, far, near) * rule.acid_share**paths.acids
+    in_ring = rule.ring[np.clip(paths.bonds, 1, len(rule.ring)) - 1]
+    coupling = np.where(paths.special == SAME_RING, in_ring, coupling)
+    coupling = coupling + np.where(paths.special == SHARED_PROTON, rule.shared_proton, 0.0)
     return coupling * (1.0 - np.eye(paths.bonds.shape[-1]))
+
+
+@cache
+def _classes(section: str) -> frozenset[str]:
+    return frozenset(read_toml("interactions.toml")[section]["classes"])
 
 
 @cache
@@ -146,7 +167,7 @@ def _centre(site: Site) -> int:
 def _paths_from(
     graph: Graph, start: int, ends: Collection[int]
 ) -> tuple[dict[int, int], dict[int, int], dict[int, int]]:
-    """Shortest distance, number of shortest paths and most conjugated bonds on one, as far as the last of the ends."""
+    """Shortest distance, number of shortest paths and most conjugated bonds on one, out to the last end."""
     distance, count, conjugated = {start: 0}, {start: 1}, {start: 0}
     edge = [start]
     kind = graph.kind
@@ -173,8 +194,19 @@ def _paths_from(
     return distance, count, conjugated
 
 
-Pair = tuple[int, int, int, int]
-"""Bonds, conjugated bonds, number of shortest paths and acids of two sites, as in `Paths`."""
+Pair = tuple[int, int, int, int, int]
+"""Bonds, conjugated bonds, number of shortest paths, acids and special relation of two sites, as in `Paths`."""
+
+SAME_RING, SHARED_PROTON = 1, 2
+
+
+def _special(graph: Graph, first: Site, second: Site) -> int:
+    """Whether two sites are nitrogens of one aromatic ring, or hold one proton between them."""
+    if first.site_class in _classes("shared_proton") and second.site_class in _classes("shared_proton"):
+        return SHARED_PROTON
+    if graph.kind[first.atom] == "n" == graph.kind[second.atom] and graph.ring_bond(first.atom, second.atom):
+        return SAME_RING
+    return 0
 
 
 def site_pairs(graph: Graph, sites: Sequence[Site]) -> dict[tuple[int, int], tuple[Pair, bool]]:
@@ -197,13 +229,15 @@ def site_pairs(graph: Graph, sites: Sequence[Site]) -> dict[tuple[int, int], tup
                     and acid.row.family in _SHIFTING
                 )
                 exclusive = shift or acid.atom in base.core
-            pairs[i, j] = (distance[other], along[other], number[other], oxygens[i] + oxygens[j]), exclusive
+            acids = oxygens[i] + oxygens[j]
+            special = _special(graph, first, second)
+            pairs[i, j] = (distance[other], along[other], number[other], acids, special), exclusive
     return pairs
 
 
 @lru_cache(maxsize=10_000)
 def _pair_coupling(pair: Pair) -> float:
-    """Interaction of two sites under the law in use; paths repeat, and small arrays cost more than their arithmetic."""
+    """Interaction of two sites under the law in use; paths repeat, and small arrays are dear."""
     paths = Paths(*[np.array([[0, number], [number, 0]]) for number in pair])
     return float(coupling_matrix(paths, law())[0, 1])
 
@@ -260,11 +294,11 @@ def find_paths(graph: Graph, sites: Sequence[Site]) -> tuple[Paths, NDArray[np.b
     """
     n = len(sites)
     bonds = np.zeros((n, n), dtype=np.int64)
-    conjugated, acids = bonds.copy(), bonds.copy()
+    conjugated, acids, special = bonds.copy(), bonds.copy(), bonds.copy()
     count = np.ones((n, n), dtype=np.int64)
     exclusive = np.zeros((n, n), dtype=bool)
     for (i, j), (pair, one_unit) in site_pairs(graph, sites).items():
-        for array, number in zip((bonds, conjugated, count, acids), pair, strict=True):
+        for array, number in zip((bonds, conjugated, count, acids, special), pair, strict=True):
             array[i, j] = array[j, i] = number
         exclusive[i, j] = exclusive[j, i] = one_unit
-    return Paths(bonds, conjugated, count, acids), exclusive if exclusive.any() else None
+    return Paths(bonds, conjugated, count, acids, special), exclusive if exclusive.any() else None

@@ -108,7 +108,7 @@ def site_lines(parent: Parent) -> Lines:
 
 
 def estimates_of(batch: Sequence[Lines]) -> list[tuple[Estimate, ...]]:
-    """Intrinsic constants of many parents: lines plus the correction from measured neighbours, where a model is there.
+    """Intrinsic constants of many parents: lines plus the correction from measured neighbours.
 
     Parameters
     ----------

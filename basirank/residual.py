@@ -22,7 +22,7 @@ from numpy.typing import NDArray
 
 from .graph import Graph
 from .sites import Site
-from .surroundings import Piece, Surroundings, site_counts, spelled, weighted
+from .surroundings import Piece, Surroundings, feature_weight, site_counts, spelled, weighted
 from .tables import read_table
 
 __all__ = ["BLOCK", "Correction", "Kernel", "corrections", "group_of", "model", "site_counts", "weighted"]
@@ -35,6 +35,21 @@ _VECTOR = 8
 
 Floats = NDArray[np.float64]
 Codes = NDArray[np.int64]
+
+
+def exact_steps(values: Floats, bits: int) -> Floats:
+    """Values rounded to steps of 2^-bits.
+
+    A product of two such matrices has an exact result in double precision as long as the bits of a sum stay below 53,
+    whatever the order of summation: so a site's numbers don't depend on the batch it came in.
+    """
+    return np.round(values * 2.0**bits) / 2.0**bits
+
+
+COVARIANCE_BITS = 18
+WEIGHT_BITS = 15
+EXPLAINED_BITS = 10
+"""Steps of covariances, weights and of the matrix of the variance; with sums over at most 2^10 sites they are exact."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -157,7 +172,8 @@ class Group:
     site_class: Codes
     family: Codes
     weights: Floats
-    explained: NDArray[np.float32]
+    explained: Floats
+    scale: float
 
     def look_up(self, piece: Piece) -> tuple[float, tuple[int, ...]]:
         """Weight of the features of a piece and rows of those that are known, remembered."""
@@ -165,7 +181,7 @@ class Group:
             self.read.clear()
         features = spelled(piece)
         known = tuple(self.vocabulary[feature] for feature in features if feature in self.vocabulary)
-        self.read[piece] = found = (len(features) * self.fade ** int(features[0][0]), known)
+        self.read[piece] = found = (len(features) * feature_weight(self.fade, int(features[0][0])), known)
         return found
 
     def rows(self, pieces: Sequence[Piece]) -> tuple[list[int], float]:
@@ -204,6 +220,10 @@ class Model:
     quantile: dict[str, float]
     threshold: float
 
+    def prior(self, group: str) -> float:
+        """Prior variance of a correction in a group [pK units squared]."""
+        return self.kernel.variance * (self.groups[group].scale if group in self.groups else 1.0)
+
 
 @cache
 def model() -> Model:
@@ -229,7 +249,9 @@ def model() -> Model:
                 settings["kernel"]["fade"],
                 {},
                 features,
-                *(part[field] for field in ("total", "value", "site_class", "family", "weights", "explained")),
+                *(part[field] for field in ("total", "value", "site_class", "family", "weights")),
+                part["explained"].astype(np.float64),
+                settings["scale"][name],
             )
     return Model(
         kernel=Kernel(**settings["kernel"]),
@@ -282,7 +304,8 @@ def corrections(graphs: Sequence[Graph], sites: Sequence[Site], values: Sequence
 
 def _correction(trained: Model, site: Site, mean: float, left: float) -> Correction:
     """Correction of one site from its mean and the variance that is left."""
-    support = "supported" if left < trained.threshold * trained.kernel.variance else "extrapolated"
+    prior = trained.prior(group_of()[site.row.family])
+    support = "supported" if left < trained.threshold * prior else "extrapolated"
     noise = trained.spread.get(site.site_class, trained.spread[f"all {site.kind}s"])
     return Correction(mean, trained.quantile[support] * math.sqrt(left + noise**2), support)
 
@@ -291,7 +314,7 @@ def _block(
     trained: Model, name: str, around: Sequence[Surroundings], sites: Sequence[Site], values: Sequence[float]
 ) -> tuple[Floats, Floats]:
     """Mean and remaining variance of at most `BLOCK` sites of one group, then those of the padding."""
-    prior = trained.kernel.variance
+    prior = trained.prior(name)
     group = trained.groups.get(name)
     if group is None:
         return np.zeros(len(sites)), np.full(len(sites), prior)
@@ -308,14 +331,14 @@ def _block(
         family[row] = trained.families.get(site.row.family, -1)
     value[: len(values)] = values
     covariance = np.zeros((BLOCK, len(group.total)))
-    covariance[:filled] = trained.kernel.covariance(
+    covariance[:filled] = group.scale * trained.kernel.covariance(
         overlap.astype(np.float64),
         (total, group.total),
         (value, group.value),
         (site_class, group.site_class),
         (family, group.family),
     )
+    covariance = exact_steps(covariance, COVARIANCE_BITS)
     mean = covariance @ group.weights
-    small = covariance.astype(np.float32)
-    explained = ((small @ group.explained) * small).sum(axis=1, dtype=np.float64)
+    explained = (exact_steps(covariance @ group.explained, COVARIANCE_BITS) * covariance).sum(axis=1)
     return mean, np.clip(prior - explained, 1e-3 * prior, prior)

@@ -1,9 +1,9 @@
-"""Screens: which patterns of a table can match a molecule at all, told from its atoms and their neighbours alone.
+"""Screens: which patterns of a table can match a molecule at all, told from its atoms and their neighbours.
 
-A SMARTS pattern is asked, atom by atom, for what it says of the atom and of the bonds and atoms beside it (element,
-aromaticity, charge, hydrogens, connections, bond orders); recursive parts, rings and anything else count as "perhaps".
-So a screen never excludes a match, and it is made from the patterns themselves: a new row of a table needs no care.
-What an atom's star can satisfy is remembered, since stars repeat from molecule to molecule.
+A SMARTS pattern is asked, atom by atom, for what it says of the atom and of the bonds and atoms beside it
+(element, aromaticity, charge, hydrogens, connections, bond orders); recursive parts, rings and anything else
+count as "perhaps". So a screen never excludes a match, and it is made from the patterns themselves: a new row
+of a table needs no care. What a star can satisfy is remembered, since stars repeat among molecules.
 """
 
 from __future__ import annotations
@@ -42,7 +42,7 @@ Tests = dict[str, Callable[[Any, int], bool]]
 
 
 def _truth(lines: Sequence[str], subject: AtomType | int, tests: Tests) -> bool | None:
-    """Truth of a query as RDKit describes it, one node a line, inner nodes set in by two; None: not to be told."""
+    """Truth of a query as RDKit describes it, a node a line, inner ones set in by two; None: unknown."""
     words = lines[0].split()
     if words[0] in ("AtomAnd", "AtomOr", "BondAnd", "BondOr") and len(words) == 1:
         depth = len(lines[0]) - len(lines[0].lstrip()) + 2
@@ -70,7 +70,8 @@ class _Demand:
 
 
 def _demand(atom: Chem.Atom) -> _Demand:
-    arms = Counter((bond.DescribeQuery(), bond.GetOtherAtom(atom).DescribeQuery()) for bond in atom.GetBonds())
+    bonds = atom.GetBonds()
+    arms = Counter((bond.DescribeQuery(), bond.GetOtherAtom(atom).DescribeQuery()) for bond in bonds)
     return _Demand(atom.DescribeQuery(), tuple(sorted(arms.items())))
 
 
@@ -105,7 +106,7 @@ class Screen:
         self._known: dict[Star, tuple[int, int]] = {}
 
     def _likely(self, star: Star) -> list[tuple[int, int, list[tuple[int, int]]]]:
-        """Demands that an atom of this type may meet: number, arms asked for (bits), arms asked for several times."""
+        """Demands that an atom of this type may meet: number, arms (bits), arms asked for several times."""
         likely = self._of_type.get(star[0])
         if likely is None:
             likely = self._of_type[star[0]] = []
@@ -137,7 +138,9 @@ class Screen:
             union |= arms
         met = centre = 0
         for number, once, several in self._likely(star):
-            if once & union == once and all(sum(a >> arm & 1 for a in around) >= times for arm, times in several):
+            if once & union != once:
+                continue
+            if all(sum(arms >> arm & 1 for arms in around) >= times for arm, times in several):
                 met |= 1 << number
                 centre |= self._of_centre.get(number, 0)
         if len(self._known) >= _MOST_REMEMBERED:

@@ -8,7 +8,7 @@ substituents are walked, and 9 belongs to the unit without being an anchor.
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from functools import cache
 from typing import Literal
@@ -119,9 +119,10 @@ def site_classes() -> tuple[SiteClass, ...]:
 @cache
 def _screen() -> Screen:
     """Screen of all rows, centred on the nitrogens that a row accounts for or the atom of an acid."""
-    last = {"acid": 1}
-    centres = [[q for q, role in row.roles if role <= last.get(row.kind, _LAST_ACCOUNTED)] for row in site_classes()]
-    return Screen([row.pattern for row in site_classes()], centres)
+    rows = site_classes()
+    last = [1 if row.kind == "acid" else _LAST_ACCOUNTED for row in rows]
+    centres = [[q for q, role in row.roles if role <= end] for row, end in zip(rows, last, strict=True)]
+    return Screen([row.pattern for row in rows], centres)
 
 
 def _shortlist(graph: Graph) -> Shortlist:
@@ -131,9 +132,10 @@ def _shortlist(graph: Graph) -> Shortlist:
     return [(place, rows[place]) for place in places if rows[place].needs <= kinds], centres
 
 
-def _matches(mol: Chem.Mol, row: SiteClass) -> tuple[tuple[int, ...], ...]:
+def _matches(mol: Chem.Mol, row: SiteClass, position: Sequence[int]) -> Sequence[tuple[int, ...]]:
+    """Matches of a row, in the order of the canonical positions of their atoms: the first decides the anchors."""
     found: tuple[tuple[int, ...], ...] = mol.GetSubstructMatches(row.pattern, uniquify=False, maxMatches=10_000)
-    return found
+    return sorted(found, key=lambda match: [position[atom] for atom in match]) if len(found) > 1 else found
 
 
 def _site_atom(row: SiteClass, match: tuple[int, ...]) -> int:
@@ -146,7 +148,17 @@ def _site(row: SiteClass, match: tuple[int, ...]) -> Site:
     return Site(_site_atom(row, match), "acid" if row.kind == "acid" else "base", row.name, core, anchors, row)
 
 
-def classify_nitrogens(mol: Chem.Mol, graph: Graph) -> tuple[dict[int, str], list[Site]]:
+def _positions(graph: Graph, order: Iterable[int] | None) -> list[int]:
+    """Canonical position of each atom (its index where no order is given)."""
+    position = list(range(len(graph.element)))
+    for place, atom in enumerate(order if order is not None else ()):
+        position[atom] = place
+    return position
+
+
+def classify_nitrogens(
+    mol: Chem.Mol, graph: Graph, order: Iterable[int] | None = None
+) -> tuple[dict[int, str], list[Site]]:
     """Put every nitrogen into its class and collect the base sites on the way.
 
     Parameters
@@ -155,6 +167,8 @@ def classify_nitrogens(mol: Chem.Mol, graph: Graph) -> tuple[dict[int, str], lis
         Neutral parent.
     graph : Graph
         Its plain arrays.
+    order : iterable of int, optional
+        Atoms in canonical order; of several ways to match one site the first in this order counts.
 
     Returns
     -------
@@ -163,18 +177,20 @@ def classify_nitrogens(mol: Chem.Mol, graph: Graph) -> tuple[dict[int, str], lis
     sites : list of Site
         Base sites in the order of the table (a site on O, S or C stands with the nitrogen that feeds it).
     """
-    return _bases(mol, graph, _shortlist(graph))
+    return _bases(mol, graph, _shortlist(graph), _positions(graph, order))
 
 
-def _bases(mol: Chem.Mol, graph: Graph, shortlist: Shortlist) -> tuple[dict[int, str], list[Site]]:
+def _bases(
+    mol: Chem.Mol, graph: Graph, shortlist: Shortlist, position: Sequence[int]
+) -> tuple[dict[int, str], list[Site]]:
     open_nitrogen = {atom for atom, element in enumerate(graph.element) if element == 7}
     rows, centres = shortlist
     classes: dict[int, str] = {}
     sites: dict[int, Site] = {}
     for place, row in rows:
-        if row.kind == "acid" or not any([centres[atom] >> place & 1 for atom in open_nitrogen]):
+        if row.kind == "acid" or not any(centres[atom] >> place & 1 for atom in open_nitrogen):
             continue
-        matches = _matches(mol, row)
+        matches = _matches(mol, row, position)
         accounted: dict[int, str] = {}
         for match in matches:
             fresh = [
@@ -203,19 +219,19 @@ def _bases(mol: Chem.Mol, graph: Graph, shortlist: Shortlist) -> tuple[dict[int,
     return classes, list(sites.values())
 
 
-def acid_sites(mol: Chem.Mol, graph: Graph) -> list[Site]:
+def acid_sites(mol: Chem.Mol, graph: Graph, order: Iterable[int] | None = None) -> list[Site]:
     """Acid sites of the neutral parent, one for each atom that can give a proton."""
-    return _acids(mol, _shortlist(graph))
+    return _acids(mol, _shortlist(graph), _positions(graph, order))
 
 
-def _acids(mol: Chem.Mol, shortlist: Shortlist) -> list[Site]:
+def _acids(mol: Chem.Mol, shortlist: Shortlist, position: Sequence[int]) -> list[Site]:
     rows, centres = shortlist
     sites: dict[int, Site] = {}
     for place, row in rows:
         # where every atom that may be the site is one already, there is nothing to find
-        if row.kind != "acid" or all([atom in sites for atom, bits in enumerate(centres) if bits >> place & 1]):
+        if row.kind != "acid" or all(atom in sites for atom, bits in enumerate(centres) if bits >> place & 1):
             continue
-        for match in _matches(mol, row):
+        for match in _matches(mol, row, position):
             atom = _site_atom(row, match)
             if atom not in sites:
                 sites[atom] = _site(row, match)
@@ -239,7 +255,7 @@ def find_sites(mol: Chem.Mol, graph: Graph, order: Iterable[int]) -> list[Site]:
     list of Site
         Sorted by the canonical position of the site atom; of two sites on one atom the base comes first.
     """
-    position = {atom: place for place, atom in enumerate(order)}
+    position = _positions(graph, order)
     shortlist = _shortlist(graph)
-    sites = _bases(mol, graph, shortlist)[1] + _acids(mol, shortlist)
+    sites = _bases(mol, graph, shortlist, position)[1] + _acids(mol, shortlist, position)
     return sorted(sites, key=lambda site: (position[site.atom], site.kind == "acid"))

@@ -1,7 +1,7 @@
 """Substituents as a site sees them: walks from an anchor along saturated chains and around aromatic rings.
 
-Along a chain the effect of a group fades by a constant factor for each carbon; around a ring it is passed on by
-position, and in fused rings by distance and parity of the path. The constants of the groups are those of `groups`.
+Along a chain the effect of a group fades by a constant factor for each carbon; around a ring it is passed on
+by position, and in fused rings by distance and parity of the path. The constants are those of `groups`.
 """
 
 from __future__ import annotations
@@ -74,7 +74,7 @@ def chain_walk(substituents: Substituents, anchor: int, core: frozenset[int]) ->
     """
     walk = _ChainWalk(substituents, core)
     for other, order in substituents.graph.neighbours[anchor]:
-        if other not in core:
+        if other not in core and order != AROMATIC:
             walk.follow(other, anchor, order, (other,), 1.0)
     return walk.hits
 
@@ -82,7 +82,7 @@ def chain_walk(substituents: Substituents, anchor: int, core: frozenset[int]) ->
 class _ChainWalk:
     """One walk along saturated carbon; `hits` is what it has met."""
 
-    __slots__ = ("substituents", "graph", "core", "fade", "reach", "hits")
+    __slots__ = ("core", "fade", "graph", "hits", "reach", "substituents")
 
     def __init__(self, substituents: Substituents, core: frozenset[int]) -> None:
         self.substituents = substituents

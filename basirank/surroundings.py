@@ -17,13 +17,13 @@ REACH = 7
 
 _HYDROGEN_REACH = 5
 _PATH_REACH = 6
+_SATURATED_REACH = 4
+"""Saturated carbon farther away is not counted: a longer chain moves nothing."""
 
-Path = tuple["Path", str, int] | None
-"""Way from the site to an atom: the way so far, then the kind of atom and the bond order of one step."""
 
-Piece = str | tuple[int, str] | tuple[int, str, Path] | tuple[int, str, str, int]
-"""A feature itself (of the site), a ring closure (distance, kind), an atom's path (distance, kind, path), or an atom
-(distance, label, kind it hangs on, bond order)."""
+Piece = str | tuple[int, str] | tuple[int, str, str] | tuple[int, str, str, int]
+"""A feature itself (of the site), a ring closure (distance, kind), an atom's path (distance, kind, kinds of atom and bond
+orders on the way), or an atom (distance, label, kind it hangs on, bond order)."""
 
 
 @lru_cache(maxsize=10_000)
@@ -55,7 +55,7 @@ class Surroundings:
         Plain arrays of the molecule.
     """
 
-    __slots__ = ("graph", "_labels", "_second")
+    __slots__ = ("_labels", "_second", "graph")
 
     def __init__(self, graph: Graph) -> None:
         self.graph = graph
@@ -92,27 +92,30 @@ class Surroundings:
         if len(graph.atom_rings[start]) > 1:
             found.append(f"0 rings {len(graph.atom_rings[start])}")
         distance = {start: 0}
-        path: dict[int, Path] = {start: None}
+        path = {start: ""}
         edge = [start]
         for away in range(1, REACH + 1):
-            following = []
+            # an atom met from several sides hangs on the one that spells first, whatever the order of the atoms
+            hung: dict[int, tuple[str, int, str]] = {}
             for inner in edge:
-                inner_kind = kind[inner]
-                way = path[inner]
+                inner_kind, way = kind[inner], path[inner]
                 for other, order in neighbours[inner]:
                     known = distance.get(other)
-                    if known is not None:
-                        if known == away:
-                            found.append((away, inner_kind))
-                        continue
-                    distance[other] = away
-                    following.append(other)
-                    path[other] = step = (way, inner_kind, order)
-                    found.append((away, labels[other], inner_kind, order))
-                    other_kind = kind[other]
-                    if other_kind != "C3" and other_kind != "c" and away <= _PATH_REACH:
-                        found.append((away, other_kind, step))
-            edge = following
+                    if known is None:
+                        distance[other] = away
+                        hung[other] = (inner_kind, order, way)
+                    elif known == away:
+                        found.append((away, kind[other]))
+                        hung[other] = min(hung[other], (inner_kind, order, way))
+            for other, (inner_kind, order, way) in hung.items():
+                path[other] = step = f"{way}{inner_kind}{order}"
+                other_kind = kind[other]
+                if other_kind == "C3" and away > _SATURATED_REACH:
+                    continue
+                found.append((away, labels[other], inner_kind, order))
+                if other_kind != "C3" and other_kind != "c" and away <= _PATH_REACH:
+                    found.append((away, other_kind, step))
+            edge = list(hung)
         found += [f"0 nest {text}" for text in self._nests(start)]
         return found
 
@@ -126,11 +129,7 @@ def spelled(piece: Piece) -> tuple[str, ...]:
         return (f"{away} closure {kind}",)
     if len(piece) == 3:
         away, kind, way = piece
-        steps = []
-        while way is not None:
-            way, inner, order = way
-            steps.append(f"{inner}{order}")
-        return (f"{away} {kind} by {''.join(reversed(steps))}",)
+        return (f"{away} {kind} by {way}",)
     away, label, inner, order = piece
     token = label.split()[0]
     on = (f"{away} {token}", f"{away} {token} on {inner}{order}")
@@ -160,9 +159,14 @@ def site_counts(graph: Graph, site: Site) -> dict[str, int]:
     return counts
 
 
+def feature_weight(fade: float, away: int) -> float:
+    """Weight of a feature by its distance in bonds, in steps of 2^-12 so that sums of weights are exact."""
+    return round(fade**away * 4096) / 4096
+
+
 def weighted(counts: dict[str, int], fade: float) -> Iterator[tuple[str, float]]:
     """Unary features with weights: a count of three is three features, so that shared counts add up to minima."""
     for feature, count in counts.items():
-        weight = fade ** int(feature[0])
+        weight = feature_weight(fade, int(feature[0]))
         for copy in range(count):
             yield (feature if copy == 0 else f"{feature} #{copy + 1}"), weight

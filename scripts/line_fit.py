@@ -129,9 +129,10 @@ class Fit:
         self.law_names = (
             [("saturated", bonds + 1) for bonds in range(len(rule.saturated))]
             + [("conjugated", bonds + 1) for bonds in range(len(rule.conjugated))]
+            + [("ring", bonds + 1) for bonds in range(len(rule.ring))]
             + [("parallel", 0), ("acid share", 0)]
         )
-        law_start = np.log([*rule.saturated, *rule.conjugated, rule.parallel_paths, rule.acid_share])
+        law_start = np.log([*rule.saturated, *rule.conjugated, *rule.ring, rule.parallel_paths, rule.acid_share])
         self.lines = len(self.names)
         self.mean = np.concatenate([[prior[key][0] for key in self.names], law_start])
         self.sd = np.concatenate([[prior[key][1] for key in self.names], np.full(len(law_start), LAW_SD)])
@@ -149,9 +150,24 @@ class Fit:
 
     def law(self, theta: np.ndarray) -> Law:
         """Interaction law of a parameter vector."""
+        prior = prior_law()
         values = np.exp(theta[self.lines :])
-        n = (len(values) - 2) // 2
-        return Law(values[:n], values[n : 2 * n], prior_law().beyond, float(values[-2]), float(values[-1]))
+        n = len(prior.saturated)
+        saturated = np.minimum.accumulate(values[:n])  # never more repulsion from farther away
+        return Law(
+            saturated,
+            np.maximum(values[n : 2 * n], saturated),  # nor less along a conjugated path than along a chain
+            prior.beyond,
+            float(values[-2]),
+            float(values[-1]),
+            values[2 * n : -2],
+            prior.shared_proton,
+        )
+
+    def law_values(self, theta: np.ndarray) -> list[float]:
+        """Values of the law in the order of `law_names`."""
+        rule = self.law(theta)
+        return [*rule.saturated, *rule.conjugated, *rule.ring, rule.parallel_paths, rule.acid_share]
 
     def macroscopic(self, theta: np.ndarray, members: np.ndarray, by_law: bool = True) -> Through:
         """Predicted constants of rows and their derivatives by the parameters and by the intrinsic constants."""

@@ -13,11 +13,31 @@ import numpy as np
 from line_fit import Row
 from scipy import sparse
 
-from basirank.residual import Kernel, group_of, site_counts, weighted
+from basirank.residual import (
+    EXPLAINED_BITS,
+    WEIGHT_BITS,
+    Kernel,
+    exact_steps,
+    group_of,
+    site_counts,
+    weighted,
+)
 
-KERNEL = Kernel(same_class=1.0, same_family=0.6, same_group=0.4, fade=0.9, value_share=0.3, value_width=1.5)
+SCALE = {
+    "aliphatic": 0.35,
+    "carboxylic": 0.30,
+    "arylamine": 0.50,
+    "azole": 0.70,
+    "amidine": 0.90,
+    "amide": 0.90,
+    "azine": 1.00,
+    "phenol": 0.90,
+    "nh_acid": 1.10,
+}
+"""Variance of the corrections by group, as a share of the kernel's: what the lines of the group miss."""
+KERNEL = Kernel(same_class=1.0, same_family=0.6, same_group=0.4, fade=0.8, value_share=0.4, value_width=1.5)
 """Hyperparameters, chosen in cross-validation grouped by compound among a few dozen settings."""
-NOISE = 0.25
+NOISE = 0.20
 """Scatter of single compounds that no neighbour explains [pK units]."""
 CLIP = 3.0
 """Residuals are cut here: past it a row is an error or chemistry of its own, not a trend."""
@@ -80,13 +100,13 @@ def site_table(rows: list[Row], fade: float) -> SiteTable:
 def covariance(table: SiteTable, value: np.ndarray, first: np.ndarray, second: np.ndarray) -> np.ndarray:
     """Covariance of the corrections of two sets of sites; zero between groups."""
     result = np.zeros((len(first), len(second)))
-    for code in table.groups.values():
+    for name, code in table.groups.items():
         rows = np.flatnonzero(table.group[first] == code)
         columns = np.flatnonzero(table.group[second] == code)
         if not (len(rows) and len(columns)):
             continue
         one, other = first[rows], second[columns]
-        result[np.ix_(rows, columns)] = KERNEL.covariance(
+        result[np.ix_(rows, columns)] = SCALE[name] * KERNEL.covariance(
             (table.features[one] @ table.features[other].T).toarray(),
             (table.total[one], table.total[other]),
             (value[one], value[other]),
@@ -127,6 +147,10 @@ def pivots(table: SiteTable, value: np.ndarray, candidates: np.ndarray, size: in
     return candidates[np.array(chosen)]
 
 
+JITTER = 3e-3
+"""Share of the variance of a basis site that its neighbours never explain."""
+
+
 @dataclass(frozen=True, slots=True)
 class Sparse:
     """Basis sites, their weights and the matrix that gives the explained variance."""
@@ -152,13 +176,16 @@ def sparse_fit(
     basis = np.concatenate([pivots(table, value, part, min(size, len(part))) for part in parts if len(part)])
     everything = np.arange(len(table.total))
     inner = covariance(table, value, basis, basis)
-    inner[np.diag_indices_from(inner)] += 1e-6 * KERNEL.variance
-    outer = np.asarray((g @ covariance(table, value, everything, basis)))
+    # enough on the diagonal to keep the inverse small: its steps must fit into exact products
+    inner[np.diag_indices_from(inner)] += JITTER * np.diag(inner)
+    outer = np.asarray(g @ covariance(table, value, everything, basis))
     scaled = outer / row_noise(rows, residual[train], train)[:, None]
     information = inner + outer.T @ scaled
     weights = np.linalg.solve(information, scaled.T @ np.clip(residual[train], -CLIP, CLIP))
     explained = np.linalg.inv(inner) - np.linalg.inv(information)
-    return Sparse(basis, weights, (explained + explained.T) / 2)
+    return Sparse(
+        basis, exact_steps(weights, WEIGHT_BITS), exact_steps((explained + explained.T) / 2, EXPLAINED_BITS)
+    )
 
 
 def sparse_prediction(
@@ -173,6 +200,7 @@ def sparse_prediction(
     cross = covariance(table, value, sites, trained.basis)
     mean, left = np.zeros(len(table.total)), np.zeros(len(table.total))
     mean[sites] = cross @ trained.weights
-    prior = KERNEL.variance
+    scale = {code: SCALE[name] for name, code in table.groups.items()}
+    prior = KERNEL.variance * np.array([scale[code] for code in table.group[sites]])
     left[sites] = np.clip(prior - ((cross @ trained.explained) * cross).sum(axis=1), 1e-4 * prior, prior)
     return g @ mean, g.multiply(g) @ left

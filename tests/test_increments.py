@@ -154,7 +154,6 @@ def test_the_lines_do_not_depend_on_the_spelling():
                 assert [v for _, v in found] == pytest.approx([v for _, v in expected], abs=1e-5), smiles
 
 
-@pytest.mark.xfail(reason="of several ways in which a pattern fits one site the first found is taken")
 @pytest.mark.parametrize(
     ("compound", "smiles"),
     [

@@ -83,15 +83,7 @@ def surroundings(smiles: str) -> list:
     return sorted((site.site_class, sorted(site_counts(lines.graph, site).items())) for site in lines.sites)
 
 
-TWO_PATHS = {DRUGS[1], DRUGS[4], DRUGS[9]}
-"""Compounds with an atom that two equally short paths reach from a site, by different kinds of atom."""
-
-FIRST_FOUND = pytest.mark.xfail(reason="of two equally short paths the first found counts")
-
-
-@pytest.mark.parametrize(
-    "smiles", [pytest.param(text, marks=[FIRST_FOUND] if text in TWO_PATHS else []) for text in DRUGS]
-)
+@pytest.mark.parametrize("smiles", DRUGS)
 def test_the_surroundings_of_a_site_do_not_depend_on_the_spelling(smiles):
     expected = surroundings(smiles)
     for seed in range(12):
@@ -135,7 +127,6 @@ def test_a_site_alone_and_in_a_batch_get_the_same_correction_to_the_last_bit(bat
         assert one.half_width == pytest.approx(corrected[place].half_width, rel=1e-4)
 
 
-@pytest.mark.xfail(reason="a row of the matrix product depends on its place in the block", strict=False)
 def test_a_site_alone_and_in_a_batch_get_the_same_interval_to_the_last_bit(batch, corrected):
     places = range(0, len(corrected), 9)
     assert [one.half_width for one in alone(batch, places)] == [corrected[p].half_width for p in places]

@@ -36,23 +36,9 @@ GAPS = {
 }
 
 
-AWAITED = {
-    "phenazine": "the row of quinoxaline stands before it and takes both nitrogens",
-    "sulfisoxazole": "the pattern asks for a carbon between the amide's carbon and the ring's heteroatom",
-}
-"""Examples that the table doesn't reach yet, and why."""
-
-
 def examples() -> list:
-    """Examples as parameters, those that are awaited marked."""
-    return [
-        pytest.param(
-            row,
-            id=f"{row['compound']}: {row['name']}",
-            marks=[pytest.mark.xfail(reason=AWAITED[row["compound"]])] if row["compound"] in AWAITED else [],
-        )
-        for row in EXAMPLES
-    ]
+    """Examples as parameters."""
+    return [pytest.param(row, id=f"{row['compound']}: {row['name']}") for row in EXAMPLES]
 
 
 OUTSIDE_THE_CHEAP_TEST = {
@@ -154,9 +140,6 @@ def test_the_order_of_atoms_does_not_change_the_classes(project):
         assert Counter(s.site_class for s in bases_again) == Counter(s.site_class for s in bases), smiles
 
 
-@pytest.mark.xfail(
-    reason="the row of fused arylamines asks for two ring atoms, not for a ring bond between them"
-)
 @pytest.mark.parametrize(
     ("compound", "smiles"),
     [
@@ -190,7 +173,6 @@ def test_all_rows_of_one_class_share_kind_family_and_parent_value():
     assert {name: values for name, rows in by_name().items() if len(values := values_of(rows)) > 1} == {}
 
 
-@pytest.mark.xfail(reason="'azo' is a class of bases and also the rest of N=N that takes no proton")
 def test_one_name_stands_for_one_kind():
     kinds: dict[str, set[str]] = defaultdict(set)
     for row in site_classes():
