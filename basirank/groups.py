@@ -69,8 +69,8 @@ def _small_ring(graph: Graph, atom: int) -> int:
 def spell(graph: Graph, atom: int, origin: int, order: int, depth: int) -> str:
     """Spell a substituent: kind of atom, hydrogen, bond orders and neighbours, `depth` bonds out.
 
-    The last layer holds only the kind of atom, so that a row of the table stands for all its homologues. Saturated atoms
-    of three- and four-membered rings carry the size of their ring: a cyclopropyl isn't an isopropyl.
+    The last layer holds only the kind of atom, so that a row of the table stands for all its homologues.
+    Saturated atoms of three- and four-membered rings carry the size of their ring: a cyclopropyl isn't an isopropyl.
     """
     kind = graph.kind[atom]
     if depth == 1:
@@ -111,7 +111,9 @@ def _complete(row: dict[str, str]) -> Group:
     minus = known.get("sigma_minus", para) if resonance >= 0.0 else para
     steric = known.get("steric", 0.6)
     ortho = known.get("sigma_o", ortho_constant(inductive, resonance))
-    return Group(row["name"], meta, para, minus, star, inductive, resonance, steric, row["source"], False, ortho)
+    return Group(
+        row["name"], meta, para, minus, star, inductive, resonance, steric, row["source"], False, ortho
+    )
 
 
 def ortho_constant(inductive: float, resonance: float) -> float:
@@ -128,7 +130,9 @@ def group_table() -> tuple[dict[str, Group], ...]:
         graph = build_graph(mol)
         (first, order), *more = graph.neighbours[0]
         if more or mol.GetAtomWithIdx(0).GetAtomicNum() != 0:
-            raise ValueError(f"substituents.csv: {row['smiles']!r} must start at one point of attachment, `*`")
+            raise ValueError(
+                f"substituents.csv: {row['smiles']!r} must start at one point of attachment, `*`"
+            )
         key = spell(graph, first, 0, order, int(row["depth"]))
         same_depth = by_depth.setdefault(int(row["depth"]), {})
         if key in same_depth:
@@ -140,7 +144,10 @@ def group_table() -> tuple[dict[str, Group], ...]:
 @cache
 def _atom_constants() -> dict[str, tuple[float, float]]:
     """sigma_I and sigma_R by kind of the first atom, for groups that are not in the table."""
-    return {row["kind"]: (float(row["sigma_i"]), float(row["sigma_r"])) for row in read_table("atom_constants.csv")}
+    return {
+        row["kind"]: (float(row["sigma_i"]), float(row["sigma_r"]))
+        for row in read_table("atom_constants.csv")
+    }
 
 
 def _atom_constant(graph: Graph, atom: int) -> tuple[float, float]:
@@ -173,7 +180,9 @@ def _estimate(graph: Graph, atom: int, origin: int, order: int) -> Group:
     star = inductive * relation["sigma_star_per_sigma_i"]
     name = f"{spell(graph, atom, origin, order, 2)[1:]} (estimated from its atoms)"
     ortho = ortho_constant(inductive, resonance)
-    return Group(name, meta, para, para, star, inductive, resonance, 0.6, "derived: from its atoms", True, ortho)
+    return Group(
+        name, meta, para, para, star, inductive, resonance, 0.6, "derived: from its atoms", True, ortho
+    )
 
 
 class Substituents:

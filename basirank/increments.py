@@ -304,7 +304,9 @@ TERMS: dict[str, Describe] = {
 @cache
 def coefficients() -> dict[str, tuple[Coefficient, ...]]:
     """Coefficients by owner (class or family): published or remembered priors, refined values where there are any."""
-    refined = {(row["owner"], row["anchors"], row["term"]): row for row in read_model_table("coefficients.csv")}
+    refined = {
+        (row["owner"], row["anchors"], row["term"]): row for row in read_model_table("coefficients.csv")
+    }
     by_owner: dict[str, list[Coefficient]] = {}
     for row in read_table("coefficients.csv"):
         if row["term"] not in TERMS:

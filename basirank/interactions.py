@@ -75,7 +75,9 @@ def prior_law() -> Law:
 def law() -> Law:
     """The law in use: the prior, with refined values where `models/interactions.csv` has them."""
     prior = prior_law()
-    refined = {(row["path"], int(row["bonds"])): float(row["value"]) for row in read_model_table("interactions.csv")}
+    refined = {
+        (row["path"], int(row["bonds"])): float(row["value"]) for row in read_model_table("interactions.csv")
+    }
 
     def updated(path: str, values: NDArray[np.float64]) -> NDArray[np.float64]:
         return np.array([refined.get((path, bonds), value) for bonds, value in enumerate(values.tolist(), 1)])

@@ -129,7 +129,9 @@ def estimates_of(batch: Sequence[Lines]) -> list[tuple[Estimate, ...]]:
         estimates = []
         for site, terms in zip(lines.sites, lines.terms, strict=True):
             correction = next(found)
-            added = Term(CORRECTION, (), 1.0, correction.value, "regression on measured values, models/README.md")
+            added = Term(
+                CORRECTION, (), 1.0, correction.value, "regression on measured values, models/README.md"
+            )
             estimates.append(Estimate(site, (*terms, added), correction.half_width, correction.support))
         results.append(tuple(estimates))
     return results
@@ -173,7 +175,9 @@ def predict(structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,
     ready = [(index, parent, site_lines(parent)) for index, parent in parents]
     estimates = estimates_of([lines for *_, lines in ready])
     sets = [site_set(lines, found) for (*_, lines), found in zip(ready, estimates, strict=True)]
-    for (index, parent, _), found, sites, equilibrium in zip(ready, estimates, sets, equilibrate(sets, ph), strict=True):
+    for (index, parent, _), found, sites, equilibrium in zip(
+        ready, estimates, sets, equilibrate(sets, ph), strict=True
+    ):
         predictions[index] = _prediction(parent, found, sites, equilibrium)
     return [predictions[index] for index in range(len(structures))]
 

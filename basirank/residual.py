@@ -1,8 +1,8 @@
 r"""Residual: what the lines miss, regressed on measured values with a sparse Gaussian process.
 
 The surroundings of a site are counted (`surroundings`); two sites are alike as far as their counts overlap (the
-min-max kernel), more so when they share class or family; only sites of one group (amines,
-azines, azoles, ...) speak to each other. The correction fades to zero where nothing measured is alike, and its variance says how far
+min-max kernel), more so when they share class or family; only sites of one group (amines, azines, azoles, ...) speak
+to each other. The correction fades to zero where nothing measured is alike, and its variance says how far
 that is. Training goes through the equilibrium (`scripts/train`); this module only predicts.
 """
 
@@ -48,8 +48,8 @@ def exact_steps(values: Floats, bits: int) -> Floats:
 
 COVARIANCE_BITS = 18
 WEIGHT_BITS = 15
-EXPLAINED_BITS = 10
-"""Steps of covariances, weights and of the matrix of the variance; with sums over at most 2^10 sites they are exact."""
+DIRECTION_BITS = 10
+"""Steps of covariances, weights and directions of the variance; with sums over at most 2^10 sites they are exact."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -155,7 +155,7 @@ _MOST_READ = 50_000
 
 @dataclass(frozen=True, slots=True)
 class Group:
-    """Trained arrays of one group: its basis sites, their weights and the matrix of the variance.
+    """Trained arrays of one group: its basis sites, their weights and the directions that explain variance.
 
     `features` has a row for each feature known in the group and a column for each basis site; `copies` gives for the
     row of a feature those of its second, third, ... copy. `fade` is the weight of a feature per bond; `read` remembers
@@ -172,7 +172,7 @@ class Group:
     site_class: Codes
     family: Codes
     weights: Floats
-    explained: Floats
+    directions: Floats
     scale: float
 
     def look_up(self, piece: Piece) -> tuple[float, tuple[int, ...]]:
@@ -244,14 +244,18 @@ def model() -> Model:
             features[part["rows"], part["columns"]] = part["feature_weight"]
             vocabulary = {feature: place for place, feature in enumerate(part["vocabulary"].tolist())}
             groups[name] = Group(
-                vocabulary,
-                _copies(vocabulary),
-                settings["kernel"]["fade"],
-                {},
-                features,
-                *(part[field] for field in ("total", "value", "site_class", "family", "weights")),
-                part["explained"].astype(np.float64),
-                settings["scale"][name],
+                vocabulary=vocabulary,
+                copies=_copies(vocabulary),
+                fade=settings["kernel"]["fade"],
+                read={},
+                features=features,
+                total=part["total"],
+                value=part["value"],
+                site_class=part["site_class"],
+                family=part["family"],
+                weights=part["weights"],
+                directions=part["directions"].astype(np.float64),
+                scale=settings["scale"][name],
             )
     return Model(
         kernel=Kernel(**settings["kernel"]),
@@ -261,7 +265,8 @@ def model() -> Model:
 
 
 GROUP_ARRAYS = (
-    "vocabulary", "rows", "columns", "feature_weight", "total", "value", "site_class", "family", "weights", "explained",
+    "vocabulary", "rows", "columns", "feature_weight", "total", "value",
+    "site_class", "family", "weights", "directions",
 )  # fmt: skip
 """Arrays stored for each group, under `<group>/<name>`."""
 
@@ -340,5 +345,5 @@ def _block(
     )
     covariance = exact_steps(covariance, COVARIANCE_BITS)
     mean = covariance @ group.weights
-    explained = (exact_steps(covariance @ group.explained, COVARIANCE_BITS) * covariance).sum(axis=1)
+    explained = (exact_steps(covariance @ group.directions, COVARIANCE_BITS) ** 2).sum(axis=1)
     return mean, np.clip(prior - explained, 1e-3 * prior, prior)

@@ -96,7 +96,9 @@ def site_classes() -> tuple[SiteClass, ...]:
         pattern = Chem.MolFromSmarts(row["smarts"])
         if pattern is None:
             raise ValueError(f"site_classes.csv: cannot read SMARTS {row['smarts']!r} of {row['name']!r}")
-        roles = tuple((atom.GetIdx(), atom.GetAtomMapNum()) for atom in pattern.GetAtoms() if atom.GetAtomMapNum())
+        roles = tuple(
+            (atom.GetIdx(), atom.GetAtomMapNum()) for atom in pattern.GetAtoms() if atom.GetAtomMapNum()
+        )
         if row["kind"] != "none" and sum(role == 1 for _, role in roles) != 1:
             raise ValueError(f"site_classes.csv: {row['smarts']!r} must mark one atom with :1")
         classes.append(
@@ -134,7 +136,9 @@ def _shortlist(graph: Graph) -> Shortlist:
 
 def _matches(mol: Chem.Mol, row: SiteClass, position: Sequence[int]) -> Sequence[tuple[int, ...]]:
     """Matches of a row, in the order of the canonical positions of their atoms: the first decides the anchors."""
-    found: tuple[tuple[int, ...], ...] = mol.GetSubstructMatches(row.pattern, uniquify=False, maxMatches=10_000)
+    found: tuple[tuple[int, ...], ...] = mol.GetSubstructMatches(
+        row.pattern, uniquify=False, maxMatches=10_000
+    )
     return sorted(found, key=lambda match: [position[atom] for atom in match]) if len(found) > 1 else found
 
 
@@ -145,7 +149,9 @@ def _site_atom(row: SiteClass, match: tuple[int, ...]) -> int:
 def _site(row: SiteClass, match: tuple[int, ...]) -> Site:
     anchors = tuple(sorted((role, match[query]) for query, role in row.roles if role <= _LAST_ANCHOR))
     core = tuple(match[query] for query, _ in row.roles)
-    return Site(_site_atom(row, match), "acid" if row.kind == "acid" else "base", row.name, core, anchors, row)
+    return Site(
+        _site_atom(row, match), "acid" if row.kind == "acid" else "base", row.name, core, anchors, row
+    )
 
 
 def _positions(graph: Graph, order: Iterable[int] | None) -> list[int]:

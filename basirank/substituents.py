@@ -159,7 +159,16 @@ def _is_halocarbon(graph: Graph, atom: int, origin: int) -> bool:
 def _as_star(group: Group, sigma: float) -> Group:
     """A ring substituent's Hammett constant, carried on the polar scale of the ring that passes it on."""
     return Group(
-        f"{group.name} on the ring", sigma, sigma, sigma, sigma, 0.0, 0.0, group.steric, group.source, group.estimated
+        f"{group.name} on the ring",
+        sigma,
+        sigma,
+        sigma,
+        sigma,
+        0.0,
+        0.0,
+        group.steric,
+        group.source,
+        group.estimated,
     )
 
 

@@ -1,7 +1,7 @@
-"""What surrounds a site, counted: kinds of atom by distance with the bond they hang on, paths to heteroatoms, nested shells.
+"""What surrounds a site, counted: atoms by distance with the bond they hang on, paths to heteroatoms, nested shells.
 
-The walk gives pieces (small tuples that repeat from molecule to molecule); a piece is spelled into its features only when
-it is met for the first time, so that a long list costs no text.
+The walk gives pieces (small tuples that repeat from molecule to molecule); a piece is spelled into its features only
+when it is met for the first time, so that a long list costs no text.
 """
 
 from __future__ import annotations
@@ -22,8 +22,8 @@ _SATURATED_REACH = 4
 
 
 Piece = str | tuple[int, str] | tuple[int, str, str] | tuple[int, str, str, int]
-"""A feature itself (of the site), a ring closure (distance, kind), an atom's path (distance, kind, kinds of atom and bond
-orders on the way), or an atom (distance, label, kind it hangs on, bond order)."""
+"""A feature itself (of the site), a ring closure (distance, kind), an atom's path (distance, kind, kinds of atom and
+bond orders on the way), or an atom (distance, label, kind it hangs on, bond order)."""
 
 
 @lru_cache(maxsize=10_000)
@@ -43,7 +43,9 @@ def _shell(own: str, around: tuple[tuple[int, str], ...]) -> str:
 def _first_shell(star: Star) -> str:
     """Spelling of an atom with its neighbours."""
     own, around = star_parts(star)
-    return _shell(f"{own.kind}H{own.hydrogens}", tuple([(order, f"{o.kind}H{o.hydrogens}") for order, o in around]))
+    return _shell(
+        f"{own.kind}H{own.hydrogens}", tuple([(order, f"{o.kind}H{o.hydrogens}") for order, o in around])
+    )
 
 
 class Surroundings:
@@ -69,7 +71,9 @@ class Surroundings:
         text = self._second.get(atom)
         if text is None:
             star = self.graph.star
-            around = tuple([(order, _first_shell(star[other])) for other, order in self.graph.neighbours[atom]])
+            around = tuple(
+                [(order, _first_shell(star[other])) for other, order in self.graph.neighbours[atom]]
+            )
             text = self._second[atom] = _shell(_first_shell(star[atom]), around)
         return text
 

@@ -82,7 +82,9 @@ def load(path: Path) -> list[Row]:
                 continue
             keys = [[(term.key, term.descriptor) for term in terms] for terms in lines.terms]
             error = QUALITY_ERROR.get(record["quality"].lower(), 0.3)
-            rows.append(Row(record, group, float(record["value"]), error, index, keys, lines, paths, exclusive, acid))
+            rows.append(
+                Row(record, group, float(record["value"]), error, index, keys, lines, paths, exclusive, acid)
+            )
     return rows
 
 
@@ -132,7 +134,9 @@ class Fit:
             + [("ring", bonds + 1) for bonds in range(len(rule.ring))]
             + [("parallel", 0), ("acid share", 0)]
         )
-        law_start = np.log([*rule.saturated, *rule.conjugated, *rule.ring, rule.parallel_paths, rule.acid_share])
+        law_start = np.log(
+            [*rule.saturated, *rule.conjugated, *rule.ring, rule.parallel_paths, rule.acid_share]
+        )
         self.lines = len(self.names)
         self.mean = np.concatenate([[prior[key][0] for key in self.names], law_start])
         self.sd = np.concatenate([[prior[key][1] for key in self.names], np.full(len(law_start), LAW_SD)])
@@ -219,6 +223,6 @@ class Fit:
     def site_values(self, theta: np.ndarray, table: SiteTable) -> np.ndarray:
         """Line values of all sites of the table."""
         values = np.empty(len(table.total))
-        for row, members, design in zip(self.rows, table.of_row, self.design, strict=True):
+        for members, design in zip(table.of_row, self.design, strict=True):
             values[members] = design @ theta[: self.lines]
         return values

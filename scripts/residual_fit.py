@@ -14,7 +14,8 @@ from line_fit import Row
 from scipy import sparse
 
 from basirank.residual import (
-    EXPLAINED_BITS,
+    COVARIANCE_BITS,
+    DIRECTION_BITS,
     WEIGHT_BITS,
     Kernel,
     exact_steps,
@@ -93,7 +94,16 @@ def site_table(rows: list[Row], fade: float) -> SiteTable:
     total = np.asarray(features.multiply(features).sum(axis=1)).ravel()
     code = np.array(codes)
     return SiteTable(
-        features, list(vocabulary), total, code[:, 0], code[:, 1], code[:, 2], classes, families, groups, of_row
+        features,
+        list(vocabulary),
+        total,
+        code[:, 0],
+        code[:, 1],
+        code[:, 2],
+        classes,
+        families,
+        groups,
+        of_row,
     )
 
 
@@ -151,13 +161,21 @@ JITTER = 3e-3
 """Share of the variance of a basis site that its neighbours never explain."""
 
 
+DIRECTIONS = 256
+"""Directions of the explained variance that a group keeps; what is dropped counts as not explained."""
+
+
 @dataclass(frozen=True, slots=True)
 class Sparse:
-    """Basis sites, their weights and the matrix that gives the explained variance."""
+    """Basis sites, their weights and, by code of group, the directions that explain variance.
+
+    The explained variance of a site with covariances k to the basis sites of its group is the sum of squares of
+    k times the directions.
+    """
 
     basis: np.ndarray
     weights: np.ndarray
-    explained: np.ndarray
+    directions: dict[int, np.ndarray]
 
 
 def sparse_fit(
@@ -169,7 +187,7 @@ def sparse_fit(
     train: np.ndarray,
     size: int,
 ) -> Sparse:
-    """Projected-process regression (Rasmussen and Williams 2006, section 8.3.4) on at most `size` sites of each group."""
+    """Projected-process regression (Rasmussen and Williams 2006, section 8.3.4), at most `size` sites a group."""
     g = gain_matrix(table, gains, train)
     strong = np.unique(g.indices[np.abs(g.data) > 0.2])
     parts = [strong[table.group[strong] == code] for code in table.groups.values()]
@@ -183,9 +201,22 @@ def sparse_fit(
     information = inner + outer.T @ scaled
     weights = np.linalg.solve(information, scaled.T @ np.clip(residual[train], -CLIP, CLIP))
     explained = np.linalg.inv(inner) - np.linalg.inv(information)
-    return Sparse(
-        basis, exact_steps(weights, WEIGHT_BITS), exact_steps((explained + explained.T) / 2, EXPLAINED_BITS)
-    )
+    directions = {}
+    for code in table.groups.values():
+        members = np.flatnonzero(table.group[basis] == code)
+        block = np.ix_(members, members)
+        directions[code] = exact_steps(leading(inner[block], explained[block]), DIRECTION_BITS)
+    return Sparse(basis, exact_steps(weights, WEIGHT_BITS), directions)
+
+
+def leading(inner: np.ndarray, explained: np.ndarray) -> np.ndarray:
+    """Directions u with k' E k ~ |k' u|^2 for covariances k: the leading ones of E as the kernel weighs them."""
+    if not len(inner):
+        return np.zeros((0, 1))
+    lower = np.linalg.cholesky(inner)
+    share, vectors = np.linalg.eigh(lower.T @ ((explained + explained.T) / 2) @ lower)
+    kept = np.argsort(-share)[:DIRECTIONS]
+    return np.linalg.solve(lower.T, vectors[:, kept]) * np.sqrt(np.maximum(share[kept], 0.0))
 
 
 def sparse_prediction(
@@ -202,5 +233,9 @@ def sparse_prediction(
     mean[sites] = cross @ trained.weights
     scale = {code: SCALE[name] for name, code in table.groups.items()}
     prior = KERNEL.variance * np.array([scale[code] for code in table.group[sites]])
-    left[sites] = np.clip(prior - ((cross @ trained.explained) * cross).sum(axis=1), 1e-4 * prior, prior)
+    explained = np.zeros(len(sites))
+    for code, directions in trained.directions.items():
+        members = np.flatnonzero(table.group[trained.basis] == code)
+        explained += (exact_steps(cross[:, members] @ directions, COVARIANCE_BITS) ** 2).sum(axis=1)
+    left[sites] = np.clip(prior - explained, 1e-3 * prior, prior)
     return g @ mean, g.multiply(g) @ left

@@ -113,7 +113,9 @@ def matrix(bonds: int, conjugated: int = 0, count: int = 1, acids: int = 0) -> f
     def pair(value: int) -> np.ndarray:
         return np.array([[0, value], [value, 0]])
 
-    return float(coupling_matrix(Paths(pair(bonds), pair(conjugated), pair(count), pair(acids), pair(0)), law())[0, 1])
+    return float(
+        coupling_matrix(Paths(pair(bonds), pair(conjugated), pair(count), pair(acids), pair(0)), law())[0, 1]
+    )
 
 
 def test_past_the_listed_distances_the_interaction_goes_on_falling():
