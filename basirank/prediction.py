@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from typing import Literal
 
 import numpy as np
-from rdkit import Chem
+from rdkit import Chem, rdBase
 
 from .equilibrium import Equilibrium, SiteSet, equilibrate
 from .forms import form_smiles
@@ -192,6 +192,11 @@ def _prediction(
         notes.append("no nitrogen takes a proton above pH -5")
     if equilibrium.approximate:
         notes.append(f"{len(sites)} sites: constants by clusters, approximate")
+    try:
+        with rdBase.BlockLogs():
+            forms = tuple(form_smiles(parent, sites, state.dominant) for state in equilibrium.states)
+    except ValueError as reason:
+        return Prediction("refused", f"the dominant form can't be drawn: {reason}", None, (), None, None, ())
     return Prediction(
         status="ok" if basic else "no_basic_site",
         message="; ".join(notes),
@@ -199,5 +204,5 @@ def _prediction(
         estimates=estimates,
         coupling=np.asarray(sites_in.coupling),
         equilibrium=equilibrium,
-        forms=tuple(form_smiles(parent, sites, state.dominant) for state in equilibrium.states),
+        forms=forms,
     )

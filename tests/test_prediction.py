@@ -305,3 +305,10 @@ def test_the_charge_of_the_drawn_form_is_that_of_the_most_populated_microstate()
             for has, estimate in zip(state.dominant, prediction.estimates, strict=True)
         )
         assert Chem.GetFormalCharge(form) == fixed + held
+
+
+def test_a_ring_whose_ion_cannot_be_drawn_is_refused_and_costs_its_neighbours_nothing():
+    strange = "CCN(CN1CC(cccccc1)c1cc(C)#ccc1O)C(C)C"  # a made-up fused ring with a triple bond
+    before, refused, after = predict(["CCN", strange, "CCN"])
+    assert refused.status == "refused" and "can't be drawn" in refused.message
+    assert before.equilibrium == after.equilibrium and before.status == "ok"
