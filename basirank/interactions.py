@@ -104,7 +104,7 @@ class Paths:
     acids : ndarray of int, shape (n, n)
         Number of sites of the pair whose anion is shared by its oxygens.
     special : ndarray of int, shape (n, n)
-        1 for two nitrogens of one aromatic ring, 2 for two sites that hold one proton between them, else 0.
+        1 for two nitrogens of one aromatic ring, 2 for two sites with one proton or one lone pair between them, else 0.
     """
 
     bonds: NDArray[np.int64]
@@ -202,8 +202,19 @@ Pair = tuple[int, int, int, int, int]
 SAME_RING, SHARED_PROTON = 1, 2
 
 
+def _one_azole(graph: Graph, first: int, second: int) -> bool:
+    """Whether two atoms stand in one five-membered ring, or side by side in one ring: its hydrogen moves freely."""
+    shared = [ring for ring in graph.atom_rings[first] if ring in graph.atom_rings[second]]
+    beside = any(other == second for other, _ in graph.neighbours[first])
+    return any(beside or len(graph.rings[ring]) == 5 for ring in shared)
+
+
 def _special(graph: Graph, first: Site, second: Site) -> int:
-    """Whether two sites are nitrogens of one aromatic ring, or hold one proton between them."""
+    """Whether two sites are nitrogens of one aromatic ring, or have one proton or one lone pair between them."""
+    if graph.element[first.atom] == 6 == graph.element[second.atom]:
+        feeding = {atom for atom in first.core if graph.element[atom] == 7}
+        if first.kind == second.kind == "base" and not feeding.isdisjoint(second.core):
+            return SHARED_PROTON
     if first.site_class in _classes("shared_proton") and second.site_class in _classes("shared_proton"):
         return SHARED_PROTON
     if graph.kind[first.atom] == "n" == graph.kind[second.atom] and graph.ring_bond(first.atom, second.atom):
@@ -230,6 +241,8 @@ def site_pairs(graph: Graph, sites: Sequence[Site]) -> dict[tuple[int, int], tup
                     and graph.kind[base.atom] in _ACCEPTORS
                     and acid.row.family in _SHIFTING
                 )
+                in_ring = graph.kind[base.atom] == "n" == graph.kind[acid.atom]
+                shift = shift or (in_ring and _one_azole(graph, base.atom, acid.atom))
                 exclusive = shift or acid.atom in base.core
             acids = oxygens[i] + oxygens[j]
             special = _special(graph, first, second)
@@ -276,9 +289,9 @@ def find_paths(graph: Graph, sites: Sequence[Site]) -> tuple[Paths, NDArray[np.b
     """Paths between all pairs of sites, and the pairs that are one tautomeric unit.
 
     A base and an acid are one unit when moving the acid's proton to the base gives a neutral tautomer: an acceptor
-    (:n, =N, =O, =S) and an N-H, O-H or S-H two or four conjugated bonds apart (imidazole, pyridone, amidine), or an
-    acid atom that belongs to the base's own unit. Their doubly charged state is then the neutral form again and isn't
-    counted a second time.
+    (:n, =N, =O, =S) and an N-H, O-H or S-H two or four conjugated bonds apart (imidazole, pyridone, amidine), ring
+    nitrogens of one azole or side by side, or an acid atom that belongs to the base's own unit. Their doubly charged
+    state is then the neutral form again and isn't counted a second time.
 
     Parameters
     ----------

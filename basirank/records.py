@@ -314,7 +314,7 @@ def structure_column(names: Sequence[object], wanted: str | None = None) -> int:
     >>> structure_column(["id", "SMILES"])
     1
     """
-    target = "smiles" if wanted is None else wanted
+    target = "smiles" if wanted is None else str(wanted)
     exact = [n for n, name in enumerate(names) if name == target]
     loose = [n for n, name in enumerate(names) if str(name).strip().casefold() == target.strip().casefold()]
     found = exact or loose

@@ -93,6 +93,11 @@ def test_another_column_and_a_missing_one():
         basirank.annotate_frame(frame)
 
 
+def test_a_column_whose_name_is_no_text():
+    frame = pd.DataFrame({0: ["CCN"], 1: ["x"]})
+    assert basirank.annotate_frame(frame, smiles_column=0).loc[0, "pkah_1"] > 10
+
+
 def test_rank_sorts_and_puts_rank_first():
     ranked = basirank.rank(BASES)
     assert list(ranked.columns) == ["rank", *NAMES]

@@ -62,7 +62,6 @@ FARTHEST = 4.0
 
 FAR = {
     # ... except these, each for its reason
-    ("malononitrile", "pka", 1): "a carbanion between two nitriles, the only one of its class",
     ("cyanoacetohydrazide", "pkah", 1): "its one published constant is uncertain and contested by a C-H acid",
 }
 

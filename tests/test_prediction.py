@@ -7,6 +7,7 @@ import math
 import pytest
 from rdkit import Chem
 
+from basirank.annotation import annotate
 from basirank.prediction import LOWEST, Prediction, predict
 from basirank.structures import read_parent
 
@@ -312,3 +313,33 @@ def test_a_ring_whose_ion_cannot_be_drawn_is_refused_and_costs_its_neighbours_no
     before, refused, after = predict(["CCN", strange, "CCN"])
     assert refused.status == "refused" and "can't be drawn" in refused.message
     assert before.equilibrium == after.equilibrium and before.status == "ok"
+
+
+@pytest.mark.parametrize(
+    ("compound", "smiles", "constant", "value", "within"),
+    [
+        # Pearson and Dillon 1953 (memory); Serjeant and Dempsey 1979 (memory)
+        ("malononitrile, C-H", "N#CCC#N", "pka_1", 11.2, 0.5),
+        ("nitromethane, C-H", "C[N+](=O)[O-]", "pka_1", 10.21, 0.5),
+    ],
+)
+def test_a_carbon_acid_counts_each_acceptor_once(compound, smiles, constant, value, within):
+    assert annotate([smiles]).loc[0, constant] == pytest.approx(value, abs=within), compound
+
+
+@pytest.mark.parametrize(
+    ("compound", "smiles"),
+    [
+        ("tofacitinib, no carbanion at pH 7.4", "CC1CCN(CC1N(C)c1ncnc2[nH]ccc12)C(=O)CC#N"),
+        ("1-methylnicotinamide, reduced", "CN1C=CCC(C(N)=O)=C1"),
+        ("1,2,4-triazole-3-thione", "S=c1[nH]cn[nH]1"),
+    ],
+)
+def test_a_nearly_neutral_compound_is_neutral_in_blood(compound, smiles):
+    assert abs(annotate([smiles]).loc[0, "net_charge"]) < 0.2, compound
+
+
+def test_two_enamine_carbons_of_one_nitrogen_take_one_proton():
+    twofold = annotate(["C=CN(C)C=C"]).loc[0]
+    assert twofold["net_charge"] <= 1.0
+    assert not twofold["pkah_2"] > 3
