@@ -14,7 +14,8 @@ import pytest
 from conftest import heading, table
 
 import basirank.annotation
-import basirank.cli
+import basirank.commands.rank
+import basirank.readers
 from basirank.records import schema
 from basirank.writers import ranked_table
 
@@ -224,7 +225,7 @@ def test_a_quote_that_is_never_closed_costs_its_own_row_only(run, folder):
     assert "quote" in rows[0]["message"]
     many = "".join(f"CCN,row {n}\n" for n in range(20_000))
     Path("big.csv").write_text('smiles,note\nCN,"open\n' + many)
-    with basirank.cli.open_table(["big.csv"]) as found:
+    with basirank.readers.open_table(["big.csv"]) as found:
         assert sum(1 for _ in found.rows) == 20_001
 
 
@@ -255,7 +256,7 @@ def test_a_heading_line_of_a_smiles_list_is_skipped_and_said(run, folder):
 
 
 def test_more_rows_than_a_chunk_stay_in_order(run, folder):
-    lines = [f"{'C' * (n % 7 + 1)}N row{n}" for n in range(2 * basirank.cli.CHUNK + 5)]
+    lines = [f"{'C' * (n % 7 + 1)}N row{n}" for n in range(2 * basirank.annotation.CHUNK + 5)]
     Path("in.smi").write_text("\n".join(lines))
     rows = table(run("annotate", "in.smi").stdout)
     assert [f"{row['smiles']} {row['name']}" for row in rows] == lines
@@ -347,7 +348,7 @@ def test_a_bad_smiles_in_explain(run):
 
 
 def test_rank_of_too_many_rows_names_annotate(run, folder, monkeypatch):
-    monkeypatch.setattr(basirank.cli, "RANK_LIMIT", 3)
+    monkeypatch.setattr(basirank.commands.rank, "RANK_LIMIT", 3)
     Path("in.smi").write_text("CCN\n" * 3)
     assert run("rank", "in.smi").exit_code == 0
     Path("in.smi").write_text("CCN\n" * 4)
@@ -356,7 +357,7 @@ def test_rank_of_too_many_rows_names_annotate(run, folder, monkeypatch):
 
 
 def test_rank_takes_a_million_rows():
-    assert basirank.cli.RANK_LIMIT == 1_000_000
+    assert basirank.commands.rank.RANK_LIMIT == 1_000_000
 
 
 # what is a file and what is a SMILES
@@ -381,7 +382,7 @@ def test_a_smiles_that_cannot_be_parsed_is_a_refused_row(run):
 
 
 def test_a_run_that_fails_leaves_nothing_and_the_old_file(run, folder, monkeypatch):
-    Path("in.smi").write_text("CCN\n" * (basirank.cli.CHUNK + 1))
+    Path("in.smi").write_text("CCN\n" * (basirank.annotation.CHUNK + 1))
     Path("out.csv").write_text("old\n")
     real, calls = basirank.annotation.records_of, []
 

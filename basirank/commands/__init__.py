@@ -1,0 +1,1 @@
+"""The commands, one module each; `basirank.cli` loads the one that is asked for."""

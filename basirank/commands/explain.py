@@ -1,0 +1,45 @@
+"""`explain`: why a compound has its pKaH, term by term."""
+
+from __future__ import annotations
+
+import click
+
+from ..explanation import CAUTION, INTERVAL_NOTE, explain
+from ..readers import open_table
+from ..writers import STDOUT, open_output
+from .shared import WRONG_INPUT, checked, label_place, quiet_rdkit, say, shared_options
+
+
+@click.command("explain")
+@shared_options("Write the text to FILE (.txt).")
+def command(
+    inputs: tuple[str, ...],
+    ph: tuple[str, ...],
+    output: str | None,
+    smiles_column: str | None,
+    stdin_format: str,
+) -> int:
+    """Show the sites of a compound: parent value and increments of each, with their atoms and sources.
+
+    Then come the interaction between sites, the macroscopic constants in the order of protonation, and the
+    state at each pH. Atoms are counted from 0 as written.
+    """
+    values = checked(ph, output, inputs, (".txt",))
+    code = 0
+    with open_table(inputs, smiles_column=smiles_column, stdin_format=stdin_format, warn=say) as table:
+        quiet_rdkit()
+        label = label_place(table)
+        texts = []
+        for row in table.rows:
+            name = row.cells[label] if label is not None else ""
+            told = None if row.problem else explain(row.structure, ph=values)
+            if told is None or told.status == "refused":
+                reason = row.problem if told is None else told.message
+                say(f"{name or row.structure or 'a row'}: refused: {reason}")
+                code = WRONG_INPUT
+            else:
+                texts.append(f"Compound   {name}\n{told}" if name else str(told))
+    if texts:
+        with open_output(output or STDOUT) as stream:
+            stream.write(f"\n\n{'-' * 72}\n\n".join(texts) + f"\n\n{INTERVAL_NOTE}\n{CAUTION}\n")
+    return code

@@ -1,0 +1,86 @@
+"""`rank`: a list sorted by basicity, as an aligned table or a file."""
+
+from __future__ import annotations
+
+import shutil
+import sys
+from collections import Counter
+from itertools import islice
+
+import click
+
+from ..annotation import CHUNK
+from ..explanation import CAUTION, INTERVAL_NOTE
+from ..readers import InputError, open_table
+from ..records import Record, cell, cells, ranking, schema, unclashed
+from ..writers import TableWriter, open_output, ranked_table
+from .shared import (
+    Progress,
+    batches_of,
+    checked,
+    label_place,
+    on_terminal,
+    quiet_rdkit,
+    records_of_rows,
+    say,
+    shared_options,
+    summarise,
+)
+
+RANK_LIMIT = 1_000_000  # rows that `rank` will hold and sort
+TABLE_WIDTH = 160  # of the ranked table where standard output is no terminal
+
+
+@click.command("rank")
+@shared_options("Write the whole table to FILE (.csv, .tsv), or as CSV to standard output for '-'.")
+def command(
+    inputs: tuple[str, ...],
+    ph: tuple[str, ...],
+    output: str | None,
+    smiles_column: str | None,
+    stdin_format: str,
+) -> int:
+    """Sort a list by its first pKaH, strongest base first.
+
+    Without -o an aligned table is shown: half of the 90 % interval, atom (counted from 0 as written) and
+    class of the first proton, mean net charge and share of molecules with a proton on a base site at each
+    pH. Rows without a pKaH come last.
+    """
+    values = checked(ph, output, inputs)
+    with open_table(inputs, smiles_column=smiles_column, stdin_format=stdin_format, warn=say) as table:
+        quiet_rdkit()
+        rows = list(islice(table.rows, RANK_LIMIT + 1))
+        if len(rows) > RANK_LIMIT:
+            raise InputError(
+                f"more than {RANK_LIMIT:,} rows: rank sorts, so it holds them all; use annotate instead"
+            )
+        progress = Progress(on_terminal(sys.stderr))
+        records: list[Record] = []
+        for batch in batches_of(rows, CHUNK):
+            records += records_of_rows(batch, values)
+            progress.show(len(records), len(batch) == CHUNK)
+        progress.clear()
+    order = ranking(records)
+    columns = schema(values, ranked=True)
+    if output is None:
+        label = label_place(table)
+        click.echo(
+            ranked_table(
+                [place for place, _ in order],
+                [(rows[n].cells[label] if label is not None else "") or rows[n].structure for _, n in order],
+                [records[n] for _, n in order],
+                schema(values),
+                values,
+                shutil.get_terminal_size().columns if on_terminal(sys.stdout) else TABLE_WIDTH,
+            )
+        )
+        click.echo(f"\n{INTERVAL_NOTE}\n{CAUTION}")
+        return 0
+    heading = ["rank", *map(str, unclashed(table.columns, columns)), *(column.name for column in columns[1:])]
+    with open_output(output) as stream:
+        writer = TableWriter(stream, output, heading)
+        writer.write(
+            [cell(place, "integer"), *rows[n].cells, *cells(records[n], columns[1:])] for place, n in order
+        )
+    summarise(Counter(str(record[0]) for record in records), table, output)
+    return 0
