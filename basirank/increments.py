@@ -14,6 +14,7 @@ from functools import cache
 from typing import Any, NamedTuple
 
 from .graph import AROMATIC, Graph
+from .resonance import resonance_of_groups
 from .sites import Site, SiteClass
 from .substituents import ChainHit, RingHit, Substituents, chain_walk, ring_walk
 from .tables import read_model_table, read_table
@@ -244,6 +245,10 @@ def _ortho(constant: str, label: str) -> Describe:
     return descriptor
 
 
+def _resonance(walks: SiteWalks, anchor: int) -> Iterator[Descriptor]:
+    yield "resonance of the groups (Hueckel)", (anchor,), resonance_of_groups(walks.graph, anchor, walks.core)
+
+
 def _feature(feature: str, position: str, distance: int = 0) -> Describe:
     place = position if position != "far" else "fused ring, {0.distance} bonds away"
     label = f"{feature} ({place})"
@@ -297,6 +302,7 @@ TERMS: dict[str, Describe] = {
     "ortho": _ortho("sigma_ortho", "ortho constant"),
     "ortho_n": _ortho("", "place"),
     **_feature_terms(),
+    "resonance": _resonance,
 }
 """Every term that a row of `coefficients.csv` may name, with the descriptor it stands for."""
 
