@@ -29,6 +29,8 @@ from .records import (
 if TYPE_CHECKING:
     import pandas as pd
 
+    from .kinship import Standing
+
 CHUNK = 500  # structures that go through the stages together: enough to fill the blocks of the regression
 
 
@@ -42,6 +44,17 @@ def records_of(structures: Sequence[object], ph: Sequence[float]) -> list[Record
     ph : sequence of float
         pH values [-], checked already.
     """
+    return [found for found, _ in _computed(structures, ph, standings=False)]
+
+
+def standings_of(structures: Sequence[object], ph: Sequence[float]) -> list[tuple[Record, Standing | None]]:
+    """The same records, each with what the order of a list needs to know of its first constant (`kinship`)."""
+    return _computed(structures, ph, standings=True)
+
+
+def _computed(
+    structures: Sequence[object], ph: Sequence[float], standings: bool
+) -> list[tuple[Record, Standing | None]]:
     from rdkit import Chem
 
     from .prediction import predict
@@ -49,14 +62,18 @@ def records_of(structures: Sequence[object], ph: Sequence[float]) -> list[Record
     readable = [
         n for n, item in enumerate(structures) if isinstance(item, str | Chem.Mol) and not _blank(item)
     ]
-    found: dict[int, Record] = {}
+    found: dict[int, tuple[Record, Standing | None]] = {}
     for start in range(0, len(readable), CHUNK):
         part = readable[start : start + CHUNK]
         batch: list[Any] = [structures[n] for n in part]
         with _collector_at_rest():
-            found.update((n, record(one, ph)) for n, one in zip(part, predict(batch, ph=ph), strict=True))
+            predictions = predict(batch, ph=ph, standings=standings)
+            found.update(
+                (n, (record(one, ph), one.standing)) for n, one in zip(part, predictions, strict=True)
+            )
     return [
-        found[n] if n in found else refused_record(_why_unread(item), ph) for n, item in enumerate(structures)
+        found[n] if n in found else (refused_record(_why_unread(item), ph), None)
+        for n, item in enumerate(structures)
     ]
 
 
@@ -142,6 +159,8 @@ def rank(
 ) -> pd.DataFrame:
     """The same rows sorted by the first pKaH, strongest base first, with their `rank` in front.
 
+    The last column, `above_next`, is the probability that a compound is truly more basic than the next.
+
     Parameters
     ----------
     structures : iterable of str or rdkit.Chem.Mol, or pandas.DataFrame
@@ -163,6 +182,8 @@ def rank(
     """
     import pandas as pd
 
+    from .kinship import above_next
+
     values = clean_ph(ph)
     columns = schema(values, ranked=True)
     frame = structures if isinstance(structures, pd.DataFrame) else None
@@ -170,10 +191,13 @@ def rank(
         items, index = _structures_of(frame, smiles_column), frame.index
     else:
         items, index = _listed(structures)
-    records = records_of(items, values)
-    order = ranking(records)
-    rows: list[tuple[Value, ...]] = [(place, *records[n]) for place, n in order]
+    found = standings_of(items, values)
+    order = ranking([row for row, _ in found])
     positions = [n for _, n in order]
+    surer = above_next([found[n][1] for n in positions])
+    rows: list[tuple[Value, ...]] = [
+        (place, *found[n][0], sure) for (place, n), sure in zip(order, surer, strict=True)
+    ]
     if index is None:
         index = pd.RangeIndex(len(items))
     ranked = _frame(rows, columns, index.take(positions))

@@ -90,6 +90,7 @@ class BindingPolynomial:
     base_share: Floats  # (m, n + 1): share of those with at least one proton on a base site
     top: Integers  # (m, n + 1): the most populated microstate with N protons (index into microstates(n))
     top_log: Floats  # (m, n + 1): log10 of its weight
+    interaction: Floats  # (m, n + 1): mean of sum W q q among the microstates with N protons [pK units]
 
     @property
     def constants(self) -> Floats:
@@ -104,6 +105,15 @@ class BindingPolynomial:
         :math:`\partial pK_N / \partial pK_i = \langle p_i \rangle_N - \langle p_i \rangle_{N-1}`.
         """
         return self.occupancy[:, 1:] - self.occupancy[:, :-1]
+
+    @property
+    def strain(self) -> Floats:
+        r"""What interaction takes off each macroscopic constant to first order, shape (m, n) [pK units].
+
+        If all W of a molecule grew by the factor s, :math:`\partial pK_N / \partial \ln s = -` this:
+        :math:`\langle \sum W q q \rangle_N - \langle \sum W q q \rangle_{N-1}`.
+        """
+        return self.interaction[:, 1:] - self.interaction[:, :-1]
 
     @property
     def top_protons(self) -> Booleans:
@@ -198,6 +208,11 @@ def binding_polynomial(
     occupancy = np.empty((*total.shape, pk.shape[1]))
     for i, held in enumerate(table.protons):
         occupancy[:, :, i] = np.add.reduceat(weight * held, table.first, axis=1) / total
+    # log weight = sum p pK - sum W q q, so the mean of the interaction follows from those of the other two
+    mean_log = (
+        top_log + np.add.reduceat(weight * np.where(weight > 0.0, below, 0.0), table.first, axis=1) / total
+    )
+    interaction = (occupancy * pk[:, None, :]).sum(axis=2) - mean_log
     base_bits = np.zeros(len(pk), dtype=np.int64)
     for i in range(pk.shape[1]):
         base_bits |= np.where(is_acid[:, i], 0, 1 << i)
@@ -210,6 +225,7 @@ def binding_polynomial(
         base_share=np.add.reduceat(on_base, table.first, axis=1) / total,
         top=np.minimum.reduceat(candidates, table.first, axis=1),
         top_log=top_log,
+        interaction=interaction,
     )
 
 
@@ -225,6 +241,7 @@ class MeanField:
 
     constants: Floats  # (n,): macroscopic constants of the 1st, 2nd, ... proton
     gain: Floats  # (n steps, n sites): share of each site in each step
+    strain: Floats  # (n,): what interaction takes off each constant to first order
     charge: Floats  # (h,): mean charge of the sites
     protonated: Floats  # (h,)
     dominant: Booleans  # (h, n)
@@ -419,10 +436,14 @@ def mean_field(
         axis=1,
     )
 
+    charges = along - acid
+    interaction = 0.5 * ((charges @ coupling) * charges).sum(axis=1)
+
     ph = np.asarray(ph, dtype=np.float64)
     answer = MeanField(
         constants=constants,
         gain=along[1:] - along[:-1],
+        strain=interaction[1:] - interaction[:-1],
         charge=np.empty(len(ph)),
         protonated=np.empty(len(ph)),
         dominant=np.empty((len(ph), n), dtype=bool),

@@ -51,6 +51,9 @@ class SiteSet:
         a tautomer of the neutral form and isn't counted again. None: no such pair.
     fixed_charge : int
         Formal charge of the parent, all sites neutral.
+    law_half_width : float
+        Half of the 90 % interval of the couplings as a share of them: errors of the law of interaction go together
+        within a molecule [-].
     """
 
     kinds: Sequence[Kind]
@@ -59,6 +62,7 @@ class SiteSet:
     coupling: Floats
     exclusive: Booleans | None = None
     fixed_charge: int = 0
+    law_half_width: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,7 +71,7 @@ class Step:
 
     kind: Kind
     value: float
-    half_width: float  # of the 90 % interval, from those of the sites
+    half_width: float  # of the 90 % interval, from those of the sites and of their interactions
     carrier: int  # index of the site that takes the proton
 
 
@@ -299,7 +303,7 @@ def _exact(sets: list[SiteSet], n: int, ph: list[float]) -> list[Equilibrium]:
     base_step = base_steps(gain, acid)
     carrier = carriers(gain, polynomial.top_protons, acid, base_step)
     at = populations(polynomial, ph)
-    steps = _steps(polynomial.constants, gain, base_step, carrier, sets)
+    steps = _steps(polynomial.constants, gain, polynomial.strain, base_step, carrier, sets)
     states = zip(
         at.charge.tolist(),
         at.protonated.tolist(),
@@ -326,7 +330,9 @@ def _clustered(sites: SiteSet, ph: list[float]) -> Equilibrium:
     base_step = base_steps(answer.gain[None], acid)
     no_state = np.zeros((1, len(sites.kinds) + 1, len(sites.kinds)), dtype=bool)  # the gain alone decides
     carrier = carriers(answer.gain[None], no_state, acid, base_step)
-    ladder = _steps(answer.constants[None], answer.gain[None], base_step, carrier, [sites])[0]
+    ladder = _steps(
+        answer.constants[None], answer.gain[None], answer.strain[None], base_step, carrier, [sites]
+    )[0]
     states = tuple(
         State(value, charge + sites.fixed_charge, protonated, tuple(dominant), share)
         for value, charge, protonated, dominant, share in zip(
@@ -344,13 +350,15 @@ def _clustered(sites: SiteSet, ph: list[float]) -> Equilibrium:
 def _steps(
     constants: Floats,
     gain: Floats,
+    strain: Floats,
     base_step: Booleans,
     carrier: Integers,
     sets: list[SiteSet],
 ) -> list[tuple[Step, ...]]:
     """Steps of m molecules, bases from the highest constant down, then acids from the lowest up."""
     width = np.array([sites.half_width for sites in sets], dtype=np.float64)
-    half_width = np.sqrt(((gain * width[:, None, :]) ** 2).sum(axis=2))
+    of_law = np.array([sites.law_half_width for sites in sets], dtype=np.float64)
+    half_width = np.sqrt(((gain * width[:, None, :]) ** 2).sum(axis=2) + (strain * of_law[:, None]) ** 2)
     # bases first; equal constants stay in the order of the proton count
     order = np.lexsort((np.where(base_step, -constants, constants), ~base_step), axis=1).tolist()
     kinds = np.where(base_step, "base", "acid").tolist()

@@ -19,6 +19,7 @@ from .records import clean_ph, equivalent_carriers, interval, reported, shown, s
 if TYPE_CHECKING:
     from rdkit import Chem
 
+    from .evidence import Analogue
     from .prediction import Prediction
 
 CAUTION = (
@@ -48,7 +49,7 @@ class TermLine:
 
 @dataclass(frozen=True, slots=True)
 class SiteLine:
-    """One site: its number here, atom (input numbering), class, intrinsic constant [-] and terms."""
+    """One site: its number here, atom (input numbering), class, intrinsic constant [-], terms, measured analogues."""
 
     number: int
     kind: Literal["base", "acid"]
@@ -59,6 +60,7 @@ class SiteLine:
     half_width: float
     support: str
     terms: tuple[TermLine, ...]
+    evidence: tuple[Analogue, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -209,7 +211,15 @@ def _site_line(prediction: Prediction, place: int) -> SiteLine:
         estimate.half_width,
         support(estimate),
         terms,
+        _evidence(prediction, place),
     )
+
+
+def _evidence(prediction: Prediction, place: int) -> tuple[Analogue, ...]:
+    from .evidence import analogues
+
+    lines = prediction.lines
+    return () if lines is None else analogues(lines.graph, lines.sites[place], lines.values[place])
 
 
 def _interactions(prediction: Prediction) -> tuple[tuple[int, int, float], ...]:
@@ -291,6 +301,19 @@ def _site_text(site: SiteLine) -> list[str]:
         lines.append(f"  ({len(site.terms) - len(told)} more that add nothing)")
     low, high = site.value - site.half_width, site.value + site.half_width
     lines.append(f"  {total:<{width}}  {site.value:7.2f}  ({low:.2f} to {high:.2f}, {site.support})")
+    return lines + _evidence_text(site.evidence)
+
+
+def _evidence_text(evidence: tuple[Analogue, ...]) -> list[str]:
+    """The measured values behind a correction, each with what it adds and its source."""
+    if not evidence:
+        return []
+    lines = ["  carried most by these measured values, each with its weight and what it adds:"]
+    for one in evidence:
+        constant = "pKaH" if one.kind == "pkah" else "pKa"
+        text = f"    {f'{one.name}, ' if one.name else ''}{one.smiles}: {constant} {one.value:.2f}"
+        text += f"  ({one.weight:.2f}, {one.pull:+.2f})  {one.source}"
+        lines += textwrap.wrap(text, TEXT_WIDTH, subsequent_indent=" " * 6, break_long_words=False)
     return lines
 
 

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import islice
 from typing import Literal
 
 import numpy as np
@@ -17,7 +18,8 @@ from .forms import form_smiles
 from .graph import Graph, build_graph
 from .increments import Estimate, Term, site_terms, sum_of
 from .interactions import couple
-from .residual import corrections
+from .kinship import Standing, footprint
+from .residual import Correction, corrections, model
 from .sites import Site, find_sites
 from .structures import Parent, Refusal, read_parent
 from .substituents import Substituents
@@ -30,37 +32,6 @@ CORRECTION = "correction from measured neighbours"
 
 _MARGIN = 4.0
 """A site whose intrinsic constant lies further outside can't come back by interaction: it is left out."""
-
-
-@dataclass(frozen=True, slots=True)
-class Prediction:
-    """Everything computed for one structure.
-
-    Attributes
-    ----------
-    status : {"ok", "no_basic_site", "refused"}
-        `ok` when some pKaH is at least -5.
-    message : str
-        Reason of a refusal, or remarks.
-    parent : Parent or None
-        The neutral parent.
-    estimates : tuple of Estimate
-        One for each site, in the order of the equilibrium.
-    coupling : ndarray, shape (n_sites, n_sites), or None
-        Interaction W [pK units].
-    equilibrium : Equilibrium or None
-        Macroscopic constants and states.
-    forms : tuple of str
-        SMILES of the dominant form, one for each pH.
-    """
-
-    status: Literal["ok", "no_basic_site", "refused"]
-    message: str
-    parent: Parent | None
-    estimates: tuple[Estimate, ...]
-    coupling: np.ndarray | None
-    equilibrium: Equilibrium | None
-    forms: tuple[str, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,6 +56,43 @@ class Lines:
     values: tuple[float, ...]
 
 
+@dataclass(frozen=True, slots=True)
+class Prediction:
+    """Everything computed for one structure.
+
+    Attributes
+    ----------
+    status : {"ok", "no_basic_site", "refused"}
+        `ok` when some pKaH is at least -5.
+    message : str
+        Reason of a refusal, or remarks.
+    parent : Parent or None
+        The neutral parent.
+    estimates : tuple of Estimate
+        One for each site, in the order of the equilibrium.
+    coupling : ndarray, shape (n_sites, n_sites), or None
+        Interaction W [pK units].
+    equilibrium : Equilibrium or None
+        Macroscopic constants and states.
+    forms : tuple of str
+        SMILES of the dominant form, one for each pH.
+    lines : Lines or None
+        Graph, sites and line values.
+    standing : Standing or None
+        What the order of a list needs to know of the first constant, when asked for.
+    """
+
+    status: Literal["ok", "no_basic_site", "refused"]
+    message: str
+    parent: Parent | None
+    estimates: tuple[Estimate, ...]
+    coupling: np.ndarray | None
+    equilibrium: Equilibrium | None
+    forms: tuple[str, ...]
+    lines: Lines | None = None
+    standing: Standing | None = None
+
+
 def site_lines(parent: Parent) -> Lines:
     """Sites of a parent and what the linear free-energy lines say of each.
 
@@ -107,8 +115,8 @@ def site_lines(parent: Parent) -> Lines:
     return Lines(graph, tuple(sites), tuple(itemised), tuple(values))
 
 
-def estimates_of(batch: Sequence[Lines]) -> list[tuple[Estimate, ...]]:
-    """Intrinsic constants of many parents: lines plus the correction from measured neighbours.
+def corrections_of(batch: Sequence[Lines]) -> list[tuple[Correction, ...]]:
+    """Corrections from measured neighbours of the sites of many parents.
 
     Parameters
     ----------
@@ -117,24 +125,36 @@ def estimates_of(batch: Sequence[Lines]) -> list[tuple[Estimate, ...]]:
 
     Returns
     -------
-    list of tuple of Estimate
-        Estimates of each parent's sites.
+    list of tuple of Correction
+        Corrections of each parent's sites.
     """
     graphs = [lines.graph for lines in batch for _ in lines.sites]
     sites = [site for lines in batch for site in lines.sites]
     values = [value for lines in batch for value in lines.values]
     found = iter(corrections(graphs, sites, values))
-    results = []
-    for lines in batch:
-        estimates = []
-        for site, terms in zip(lines.sites, lines.terms, strict=True):
-            correction = next(found)
-            added = Term(
-                CORRECTION, (), 1.0, correction.value, "regression on measured values, models/README.md"
-            )
-            estimates.append(Estimate(site, (*terms, added), correction.half_width, correction.support))
-        results.append(tuple(estimates))
-    return results
+    return [tuple(islice(found, len(lines.sites))) for lines in batch]
+
+
+def estimates_of(lines: Lines, found: Sequence[Correction]) -> tuple[Estimate, ...]:
+    """Intrinsic constants of one parent: lines plus the corrections from measured neighbours."""
+    estimates = []
+    for site, terms, correction in zip(lines.sites, lines.terms, found, strict=True):
+        added = Term(CORRECTION, (), 1.0, correction.value, "regression on measured values, models/README.md")
+        estimates.append(Estimate(site, (*terms, added), correction.half_width, correction.support))
+    return tuple(estimates)
+
+
+def standing_of(lines: Lines, found: Sequence[Correction], equilibrium: Equilibrium) -> Standing | None:
+    """What the order of a list needs to know of the first constant; None without one."""
+    if not equilibrium.steps or equilibrium.steps[0].kind != "base":
+        return None
+    step = equilibrium.steps[0]
+    place = step.carrier
+    return Standing(
+        step.value,
+        step.half_width,
+        footprint(lines.graph, lines.sites[place], lines.values[place], found[place]),
+    )
 
 
 def site_set(lines: Lines, estimates: Sequence[Estimate]) -> SiteSet:
@@ -147,10 +167,13 @@ def site_set(lines: Lines, estimates: Sequence[Estimate]) -> SiteSet:
         coupling=coupling,
         exclusive=exclusive,
         fixed_charge=sum(lines.graph.charge),
+        law_half_width=model().law_half_width,
     )
 
 
-def predict(structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,)) -> list[Prediction]:
+def predict(
+    structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,), standings: bool = False
+) -> list[Prediction]:
     """Predict a batch of structures.
 
     Parameters
@@ -159,6 +182,8 @@ def predict(structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,
         SMILES or molecules.
     ph : sequence of float
         pH values at which the state is computed [-].
+    standings : bool
+        Whether to keep what the order of a list needs (`kinship`).
 
     Returns
     -------
@@ -173,17 +198,24 @@ def predict(structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,
         except Refusal as reason:
             predictions[index] = Prediction("refused", str(reason), None, (), None, None, ())
     ready = [(index, parent, site_lines(parent)) for index, parent in parents]
-    estimates = estimates_of([lines for *_, lines in ready])
+    corrected = corrections_of([lines for *_, lines in ready])
+    estimates = [estimates_of(lines, found) for (*_, lines), found in zip(ready, corrected, strict=True)]
     sets = [site_set(lines, found) for (*_, lines), found in zip(ready, estimates, strict=True)]
-    for (index, parent, _), found, sites, equilibrium in zip(
-        ready, estimates, sets, equilibrate(sets, ph), strict=True
+    for (index, parent, lines), found, kept, sites, equilibrium in zip(
+        ready, estimates, corrected, sets, equilibrate(sets, ph), strict=True
     ):
-        predictions[index] = _prediction(parent, found, sites, equilibrium)
+        standing = standing_of(lines, kept, equilibrium) if standings else None
+        predictions[index] = _prediction(parent, lines, found, sites, equilibrium, standing)
     return [predictions[index] for index in range(len(structures))]
 
 
 def _prediction(
-    parent: Parent, estimates: tuple[Estimate, ...], sites_in: SiteSet, equilibrium: Equilibrium
+    parent: Parent,
+    lines: Lines,
+    estimates: tuple[Estimate, ...],
+    sites_in: SiteSet,
+    equilibrium: Equilibrium,
+    standing: Standing | None,
 ) -> Prediction:
     sites = [estimate.site for estimate in estimates]
     basic = any(step.kind == "base" and step.value >= LOWEST for step in equilibrium.steps)
@@ -205,4 +237,6 @@ def _prediction(
         coupling=np.asarray(sites_in.coupling),
         equilibrium=equilibrium,
         forms=forms,
+        lines=lines,
+        standing=standing,
     )

@@ -61,6 +61,7 @@ def _pkah_columns(n: int) -> tuple[Column, ...]:
 
 
 RANK_COLUMN = Column("rank", "integer")
+ABOVE_COLUMN = Column("above_next", "fraction")
 
 CONSTANT_COLUMNS: tuple[Column, ...] = (
     Column("status", "text"),
@@ -129,7 +130,7 @@ def schema(ph: Sequence[float] = (7.4,), *, ranked: bool = False) -> tuple[Colum
     ph : sequence of float
         pH values [-]. With one the state columns stand as named, with several each is followed by `_at_<pH>`.
     ranked : bool
-        Whether the column `rank` comes first.
+        Whether the column `rank` comes first, and `above_next` last.
 
     Examples
     --------
@@ -144,7 +145,8 @@ def schema(ph: Sequence[float] = (7.4,), *, ranked: bool = False) -> tuple[Colum
         states = tuple(
             Column(f"{column.name}_at_{value:g}", column.kind) for value in ph for column in STATE_COLUMNS
         )
-    return (*((RANK_COLUMN,) if ranked else ()), *CONSTANT_COLUMNS, *states)
+    columns = (*CONSTANT_COLUMNS, *states)
+    return (RANK_COLUMN, *columns, ABOVE_COLUMN) if ranked else columns
 
 
 def column_positions(columns: Sequence[Column]) -> dict[str, int]:

@@ -25,7 +25,9 @@ from .sites import Site
 from .surroundings import Piece, Surroundings, feature_weight, site_counts, spelled, weighted
 from .tables import read_table
 
-__all__ = ["BLOCK", "Correction", "Kernel", "corrections", "group_of", "model", "site_counts", "weighted"]
+__all__ = [
+    "BLOCK", "Correction", "Kernel", "corrections", "covariances", "group_of", "model", "site_counts", "weighted"
+]  # fmt: skip
 
 BLOCK = 64
 """Sites in one matrix product; rows are padded to it so that a result doesn't depend on the batch it came in."""
@@ -142,11 +144,18 @@ class Correction:
         Half of the 90 % interval of the corrected intrinsic constant [pK units].
     support : {"supported", "extrapolated"}
         Whether measured neighbours stand behind it.
+    variance : float
+        What is left of the correction's variance, with the scatter of its class [pK units squared].
+    explained : ndarray, shape (d,)
+        Coordinates along the directions that the measured values of the group explain: the product of those of two
+        sites is what the measured values take off their covariance [pK units].
     """
 
     value: float
     half_width: float
     support: str
+    variance: float
+    explained: Floats
 
 
 _MOST_READ = 50_000
@@ -219,6 +228,12 @@ class Model:
     spread: dict[str, float]
     quantile: dict[str, float]
     threshold: float
+    law_error: float
+
+    @property
+    def law_half_width(self) -> float:
+        """Half of the 90 % interval of the interactions of a molecule, as a share of them [-]."""
+        return self.quantile["supported"] * self.law_error
 
     def prior(self, group: str) -> float:
         """Prior variance of a correction in a group [pK units squared]."""
@@ -260,9 +275,11 @@ def model() -> Model:
     return Model(
         kernel=Kernel(**settings["kernel"]),
         groups=groups,
-        **{field: settings[field] for field in ("classes", "families", "spread", "quantile", "threshold")},
+        **{field: settings[field] for field in _SETTINGS},
     )
 
+
+_SETTINGS = ("classes", "families", "spread", "quantile", "threshold", "law_error")
 
 GROUP_ARRAYS = (
     "vocabulary", "rows", "columns", "feature_weight", "total", "value",
@@ -299,30 +316,46 @@ def corrections(graphs: Sequence[Graph], sites: Sequence[Site], values: Sequence
     for name, places in by_group.items():
         for start in range(0, len(places), BLOCK):
             part = places[start : start + BLOCK]
-            mean, left = _block(
+            mean, left, explained = _block(
                 trained, name, [around[p] for p in part], [sites[p] for p in part], [values[p] for p in part]
             )
-            for place, one, variance in zip(part, mean.tolist(), left.tolist(), strict=False):
-                results[place] = _correction(trained, sites[place], one, variance)
+            found = zip(part, mean.tolist(), left.tolist(), explained, strict=False)
+            for place, one, variance, coordinates in found:
+                results[place] = _correction(trained, sites[place], one, variance, coordinates)
     return [results[place] for place in range(len(sites))]
 
 
-def _correction(trained: Model, site: Site, mean: float, left: float) -> Correction:
+def _correction(trained: Model, site: Site, mean: float, left: float, explained: Floats) -> Correction:
     """Correction of one site from its mean and the variance that is left."""
     prior = trained.prior(group_of()[site.row.family])
     support = "supported" if left < trained.threshold * prior else "extrapolated"
     noise = trained.spread.get(site.site_class, trained.spread[f"all {site.kind}s"])
-    return Correction(mean, trained.quantile[support] * math.sqrt(left + noise**2), support)
+    variance = left + noise**2
+    return Correction(mean, trained.quantile[support] * math.sqrt(variance), support, variance, explained)
 
 
 def _block(
     trained: Model, name: str, around: Sequence[Surroundings], sites: Sequence[Site], values: Sequence[float]
-) -> tuple[Floats, Floats]:
-    """Mean and remaining variance of at most `BLOCK` sites of one group, then those of the padding."""
+) -> tuple[Floats, Floats, Floats]:
+    """Mean, remaining variance and explained coordinates of at most `BLOCK` sites of one group, and the padding."""
     prior = trained.prior(name)
     group = trained.groups.get(name)
     if group is None:
-        return np.zeros(len(sites)), np.full(len(sites), prior)
+        return np.zeros(len(sites)), np.full(len(sites), prior), np.zeros((len(sites), 1))
+    covariance = _covariances(trained, group, around, sites, values)
+    mean = covariance @ group.weights
+    explained = exact_steps(covariance @ group.directions, COVARIANCE_BITS)
+    return mean, np.clip(prior - (explained**2).sum(axis=1), 1e-3 * prior, prior), explained
+
+
+def _covariances(
+    trained: Model,
+    group: Group,
+    around: Sequence[Surroundings],
+    sites: Sequence[Site],
+    values: Sequence[float],
+) -> Floats:
+    """Covariances of at most `BLOCK` sites of one group with its basis sites, padded to `BLOCK` rows."""
     # whole vectors of the processor, so that no element is computed by other means for standing last
     filled = -(-len(sites) // _VECTOR) * _VECTOR
     overlap = np.zeros((filled, len(group.total)), dtype=np.float32)
@@ -343,7 +376,29 @@ def _block(
         (site_class, group.site_class),
         (family, group.family),
     )
-    covariance = exact_steps(covariance, COVARIANCE_BITS)
-    mean = covariance @ group.weights
-    explained = (exact_steps(covariance @ group.directions, COVARIANCE_BITS) ** 2).sum(axis=1)
-    return mean, np.clip(prior - explained, 1e-3 * prior, prior)
+    return exact_steps(covariance, COVARIANCE_BITS)
+
+
+def covariances(graph: Graph, site: Site, value: float) -> Floats:
+    """Covariances of the correction of one site with those of the basis sites of its group.
+
+    Parameters
+    ----------
+    graph : Graph
+        Molecule of the site.
+    site : Site
+        The site.
+    value : float
+        Its line value [-].
+
+    Returns
+    -------
+    ndarray, shape (basis,)
+        [pK units squared]; empty for a group without measured values.
+    """
+    trained = model()
+    group = trained.groups.get(group_of()[site.row.family])
+    if group is None:
+        return np.zeros(0)
+    found: Floats = _covariances(trained, group, [Surroundings(graph)], [site], [value])[0]
+    return found

@@ -113,6 +113,7 @@ def ranked_table(
     ranks: Sequence[int | None],
     labels: Sequence[str],
     records: Sequence[Record],
+    above: Sequence[float | None],
     columns: Sequence[Column],
     ph: Sequence[float],
     width: int,
@@ -127,6 +128,8 @@ def ranked_table(
         Name or SMILES of each row.
     records : sequence of tuple
         Records in the order to be shown.
+    above : sequence of float or None
+        Probability that each is truly more basic than the next [-].
     columns : sequence of Column
         Their schema.
     ph : sequence of float
@@ -141,6 +144,7 @@ def ranked_table(
         "compound": [_printable(label) for label in labels],
         "pKaH": [_decimal(row[_PLACES["pkah_1"]], 2) for row in records],
         "±90%": [_half_width(row) for row in records],
+        "above%": [_decimal(None if share is None else 100 * share, 0) for share in above],
         "atom": [_plain(row[_PLACES["pkah_1_atom"]]) for row in records],
         "class": [_plain(row[_PLACES["pkah_1_class"]]) for row in records],
     }

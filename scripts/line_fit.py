@@ -110,12 +110,14 @@ STEP = 0.02
 class Through:
     """Macroscopic constants of rows, and what they depend on.
 
-    `gains` holds for each row the derivatives by the intrinsic constants of its molecule's sites.
+    `gains` holds for each row the derivatives by the intrinsic constants of its molecule's sites, `strain` what
+    interaction takes off the constant (its derivative by a common factor of all W, with the sign changed).
     """
 
     predicted: np.ndarray
     jacobian: np.ndarray
     gains: list[np.ndarray]
+    strain: np.ndarray
 
 
 class Fit:
@@ -178,6 +180,7 @@ class Fit:
         predicted = np.empty(len(members))
         jacobian = np.zeros((len(members), len(theta)))
         gains: list[np.ndarray] = [np.empty(0)] * len(members)
+        strain = np.zeros(len(members))
         rule = self.law(theta)
         by_size: dict[int, list[int]] = defaultdict(list)
         for place, member in enumerate(members):
@@ -194,6 +197,7 @@ class Fit:
                 step = np.arange(len(part))
                 polynomial = binding_polynomial(pk, acid, coupling_matrix(stacked, rule), exclusive)
                 predicted[part] = polynomial.constants[step, index]
+                strain[part] = polynomial.strain[step, index]
                 gain = polynomial.gain[step, index]
                 for k, place in enumerate(part):
                     gains[place] = gain[k]
@@ -204,7 +208,7 @@ class Fit:
                     coupling = coupling_matrix(stacked, self.law(moved))
                     other = binding_polynomial(pk, acid, coupling, exclusive).constants[step, index]
                     jacobian[part, parameter] = (other - predicted[part]) / STEP
-        return Through(predicted, jacobian, gains)
+        return Through(predicted, jacobian, gains, strain)
 
     def solve(self, members: np.ndarray, start: np.ndarray | None = None, rounds: int = 6) -> np.ndarray:
         """Posterior mean on the given rows."""

@@ -170,12 +170,13 @@ class Sparse:
     """Basis sites, their weights and, by code of group, the directions that explain variance.
 
     The explained variance of a site with covariances k to the basis sites of its group is the sum of squares of
-    k times the directions.
+    k times the directions. `pulls` (basis, training rows) says how much each measured value moves a weight.
     """
 
     basis: np.ndarray
     weights: np.ndarray
     directions: dict[int, np.ndarray]
+    pulls: np.ndarray
 
 
 def sparse_fit(
@@ -199,14 +200,15 @@ def sparse_fit(
     outer = np.asarray(g @ covariance(table, value, everything, basis))
     scaled = outer / row_noise(rows, residual[train], train)[:, None]
     information = inner + outer.T @ scaled
-    weights = np.linalg.solve(information, scaled.T @ np.clip(residual[train], -CLIP, CLIP))
+    pulls = np.linalg.solve(information, scaled.T)
+    weights = pulls @ np.clip(residual[train], -CLIP, CLIP)
     explained = np.linalg.inv(inner) - np.linalg.inv(information)
     directions = {}
     for code in table.groups.values():
         members = np.flatnonzero(table.group[basis] == code)
         block = np.ix_(members, members)
         directions[code] = exact_steps(leading(inner[block], explained[block]), DIRECTION_BITS)
-    return Sparse(basis, exact_steps(weights, WEIGHT_BITS), directions)
+    return Sparse(basis, exact_steps(weights, WEIGHT_BITS), directions, pulls)
 
 
 def leading(inner: np.ndarray, explained: np.ndarray) -> np.ndarray:

@@ -100,20 +100,28 @@ def test_a_column_whose_name_is_no_text():
 
 def test_rank_sorts_and_puts_rank_first():
     ranked = basirank.rank(BASES)
-    assert list(ranked.columns) == ["rank", *NAMES]
+    assert list(ranked.columns) == ["rank", *NAMES, "above_next"]
     assert ranked["rank"].tolist()[:3] == [1, 2, 3]
     assert ranked["rank"].isna().tolist() == [False] * 3 + [True] * 2
     assert ranked["pkah_1"].iloc[:3].is_monotonic_decreasing
     assert list(ranked.index)[2:] == [0, 2, 3]
-    pd.testing.assert_frame_equal(ranked.drop(columns="rank").sort_index(), basirank.annotate(BASES))
+    pd.testing.assert_frame_equal(
+        ranked.drop(columns=["rank", "above_next"]).sort_index(), basirank.annotate(BASES)
+    )
 
 
 def test_rank_of_a_frame_keeps_its_columns_after_the_rank():
     frame = pd.DataFrame({"rank": ["x", "y"], "smiles": ["c1ccncc1", "CCN"]}, index=["p", "q"])
     ranked = basirank.rank(frame)
-    assert list(ranked.columns) == ["rank", "input_rank", "smiles", *NAMES]
+    assert list(ranked.columns) == ["rank", "input_rank", "smiles", *NAMES, "above_next"]
     assert list(ranked.index) == ["q", "p"]
     assert list(ranked["input_rank"]) == ["y", "x"]
+
+
+def test_rank_says_how_sure_the_order_is():
+    ranked = basirank.rank(BASES)
+    assert ranked["above_next"].isna().tolist() == [False, False, True, True, True]
+    assert ranked["above_next"].iloc[1] > 0.99  # ethylamine above pyridine
 
 
 def test_rank_of_nothing():

@@ -119,7 +119,7 @@ def test_rank_writes_a_sorted_table(run, folder):
     Path("in.csv").write_text("rank,smiles\na,CCC\nb,c1ccncc1\nc,CCN\nd,x\ne,CCN\n")
     assert run("rank", "in.csv", "-o", "out.csv").exit_code == 0
     text = Path("out.csv").read_text()
-    assert heading(text) == ["rank", "input_rank", "smiles", *NAMES]
+    assert heading(text) == ["rank", "input_rank", "smiles", *NAMES, "above_next"]
     assert [(row["rank"], row["input_rank"]) for row in table(text)] == [
         ("1", "c"), ("2", "e"), ("3", "b"), ("", "a"), ("", "d"),
     ]  # fmt: skip
@@ -143,7 +143,13 @@ def test_the_table_fits_the_width(width):
 
     smiles = ["CCN", "CCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCCN(C)CCCCCCCCCCCC", "Xx"]
     text = ranked_table(
-        [1, 2, None], smiles, records_of(smiles, (2.0, 7.4)), schema((2.0, 7.4)), (2.0, 7.4), width
+        [1, 2, None],
+        smiles,
+        records_of(smiles, (2.0, 7.4)),
+        [0.75, None, None],
+        schema((2.0, 7.4)),
+        (2.0, 7.4),
+        width,
     )
     lines = text.splitlines()
     assert max(map(len, lines)) <= width

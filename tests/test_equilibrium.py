@@ -429,3 +429,27 @@ def test_many_sites_give_finite_answers(n):
     assert charges == sorted(charges, reverse=True)
     assert all(0.0 <= state.protonated_fraction <= 1.0 for state in found.states)
     assert all(0.0 <= state.dominant_fraction <= 1.0 for state in found.states)
+
+
+def test_the_interval_of_a_step_holds_the_error_of_the_interaction():
+    coupling = np.array([[0.0, 2.5], [2.5, 0.0]])
+    exact, doubtful = (
+        equilibrate(
+            [SiteSet(["base", "base"], [9.6, 9.6], [0.3, 0.3], coupling, law_half_width=share)], [7.4]
+        )[0]
+        for share in (0.0, 0.2)
+    )
+    first, second = zip(exact.steps, doubtful.steps, strict=True)
+    assert first[0].half_width == first[1].half_width  # the first proton meets no other charge
+    assert second[1].half_width == pytest.approx(math.hypot(second[0].half_width, 0.2 * 2.5))
+
+
+@given(st.integers(0, 2**32 - 1), st.integers(1, 6))
+def test_strain_is_the_derivative_by_a_common_factor_of_all_interactions(seed, n):
+    generator = np.random.default_rng(seed)
+    pk, acid = generator.normal(7, 3, (1, n)), generator.random((1, n)) < 0.4
+    half = np.triu(generator.random((1, n, n)) * 3, 1)
+    coupling = half + half.transpose(0, 2, 1)
+    step = 1e-4
+    here, up, down = (binding_polynomial(pk, acid, coupling * np.exp(s)) for s in (0.0, step, -step))
+    assert (down.constants - up.constants) / (2 * step) == pytest.approx(here.strain, abs=1e-4)

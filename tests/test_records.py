@@ -101,8 +101,8 @@ def test_one_ph_gives_exactly_the_fixed_columns():
     assert [column.name for column in schema((7.4,))] == SCHEMA
 
 
-def test_rank_comes_first():
-    assert [column.name for column in schema((7.4,), ranked=True)] == ["rank", *SCHEMA]
+def test_rank_comes_first_and_the_surety_of_the_order_last():
+    assert [column.name for column in schema((7.4,), ranked=True)] == ["rank", *SCHEMA, "above_next"]
 
 
 def test_several_ph_repeat_the_state_columns_with_the_ph_in_their_names():

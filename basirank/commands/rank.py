@@ -6,6 +6,7 @@ import shutil
 import sys
 from collections import Counter
 from itertools import islice
+from typing import TYPE_CHECKING
 
 import click
 
@@ -21,11 +22,14 @@ from .shared import (
     label_place,
     on_terminal,
     quiet_rdkit,
-    records_of_rows,
     say,
     shared_options,
+    standings_of_rows,
     summarise,
 )
+
+if TYPE_CHECKING:
+    from ..kinship import Standing
 
 RANK_LIMIT = 1_000_000  # rows that `rank` will hold and sort
 TABLE_WIDTH = 160  # of the ranked table where standard output is no terminal
@@ -42,9 +46,9 @@ def command(
 ) -> int:
     """Sort a list by its first pKaH, strongest base first.
 
-    Without -o an aligned table is shown: half of the 90 % interval, atom (counted from 0 as written) and
-    class of the first proton, mean net charge and share of molecules with a proton on a base site at each
-    pH. Rows without a pKaH come last.
+    Without -o an aligned table is shown: half of the 90 % interval, probability that the compound is truly
+    more basic than the next, atom (counted from 0 as written) and class of the first proton, mean net
+    charge and share of molecules with a proton on a base site at each pH. Rows without a pKaH come last.
     """
     values = checked(ph, output, inputs)
     with open_table(inputs, smiles_column=smiles_column, stdin_format=stdin_format, warn=say) as table:
@@ -56,11 +60,15 @@ def command(
             )
         progress = Progress(on_terminal(sys.stderr))
         records: list[Record] = []
+        standings: list[Standing | None] = []
         for batch in batches_of(rows, CHUNK):
-            records += records_of_rows(batch, values)
+            for record, standing in standings_of_rows(batch, values):
+                records.append(record)
+                standings.append(standing)
             progress.show(len(records), len(batch) == CHUNK)
         progress.clear()
     order = ranking(records)
+    surer = _above_next([standings[n] for _, n in order])
     columns = schema(values, ranked=True)
     if output is None:
         label = label_place(table)
@@ -69,6 +77,7 @@ def command(
                 [place for place, _ in order],
                 [(rows[n].cells[label] if label is not None else "") or rows[n].structure for _, n in order],
                 [records[n] for _, n in order],
+                surer,
                 schema(values),
                 values,
                 shutil.get_terminal_size().columns if on_terminal(sys.stdout) else TABLE_WIDTH,
@@ -80,7 +89,14 @@ def command(
     with open_output(output) as stream:
         writer = TableWriter(stream, output, heading)
         writer.write(
-            [cell(place, "integer"), *rows[n].cells, *cells(records[n], columns[1:])] for place, n in order
+            [cell(place, "integer"), *rows[n].cells, *cells((*records[n], sure), columns[1:])]
+            for (place, n), sure in zip(order, surer, strict=True)
         )
     summarise(Counter(str(record[0]) for record in records), table, output)
     return 0
+
+
+def _above_next(standings: list[Standing | None]) -> list[float | None]:
+    from ..kinship import above_next
+
+    return above_next(standings)

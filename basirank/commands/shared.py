@@ -8,13 +8,16 @@ from collections import Counter
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
 from itertools import islice
-from typing import Any, TypeVar
+from typing import TYPE_CHECKING, Any, TypeVar
 
 import click
 
 from ..readers import FORMATS, InputError, Row, Table
 from ..records import Record, clean_ph, refused_record
 from ..writers import STDOUT, check_output
+
+if TYPE_CHECKING:
+    from ..kinship import Standing
 
 WRONG_INPUT = 2
 
@@ -69,11 +72,23 @@ def quiet_rdkit() -> None:
 
 
 def records_of_rows(batch: Sequence[Row], ph: tuple[float, ...]) -> list[Record]:
+    """A record for each row of a batch; a row with a problem is refused."""
     from ..annotation import records_of
 
     with _interrupt_held():
         computed = iter(records_of([row.structure for row in batch if row.problem is None], ph))
     return [next(computed) if row.problem is None else refused_record(row.problem, ph) for row in batch]
+
+
+def standings_of_rows(batch: Sequence[Row], ph: tuple[float, ...]) -> list[tuple[Record, Standing | None]]:
+    """The same, each with what the order of a list needs to know."""
+    from ..annotation import standings_of
+
+    with _interrupt_held():
+        computed = iter(standings_of([row.structure for row in batch if row.problem is None], ph))
+    return [
+        next(computed) if row.problem is None else (refused_record(row.problem, ph), None) for row in batch
+    ]
 
 
 @contextmanager

@@ -1,0 +1,173 @@
+r"""Kinship: how far the errors of two estimates go together, and what that says of their order.
+
+Compounds of one series share what the lines and the measured neighbours get wrong, so the order of two analogues is
+surer than their intervals suggest. The covariance of two corrections after training is that of the kernel less what
+the measured values explain of both.
+"""
+
+from __future__ import annotations
+
+import math
+import zlib
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from .graph import Graph
+from .residual import Correction, group_of, model, site_counts, weighted
+from .sites import Site
+
+Floats = NDArray[np.float64]
+
+NINETY = 1.6448536269514722
+"""Half of the 90 % interval of a normal distribution in standard deviations."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Footprint:
+    """What a site's covariance with any other site follows from.
+
+    Attributes
+    ----------
+    group : str
+        Group of families; sites of two groups have no covariance.
+    features : ndarray of int, shape (f,)
+        Codes of its weighted features, each copy of its own, ascending.
+    weights : ndarray, shape (f,)
+        Their weights [-].
+    total : float
+        Sum of the weights of all features [-].
+    value : float
+        Line value [-].
+    site_class, family : int
+        Codes of class and family, -1 for one that was not in training.
+    explained : ndarray, shape (d,)
+        Coordinates along the directions that the measured values explain [pK units].
+    variance : float
+        What is left of the correction's variance, with the scatter of its class [pK units squared].
+    """
+
+    group: str
+    features: NDArray[np.uint32]
+    weights: NDArray[np.float32]
+    total: float
+    value: float
+    site_class: int
+    family: int
+    explained: NDArray[np.float32]
+    variance: float
+
+
+def footprint(graph: Graph, site: Site, value: float, correction: Correction) -> Footprint:
+    """Footprint of a site from its line value and its correction.
+
+    Parameters
+    ----------
+    graph : Graph
+        Plain arrays of the molecule.
+    site : Site
+        The site.
+    value : float
+        Line value [-].
+    correction : Correction
+        As `residual.corrections` gives it for this site.
+    """
+    trained = model()
+    features = sorted(
+        (zlib.crc32(feature.encode()), weight)
+        for feature, weight in weighted(site_counts(graph, site), trained.kernel.fade)
+    )
+    weights = np.array([weight for _, weight in features])
+    return Footprint(
+        group=group_of()[site.row.family],
+        features=np.array([code for code, _ in features], dtype=np.uint32),
+        weights=weights.astype(np.float32),
+        total=float(weights.sum()),
+        value=value,
+        site_class=trained.classes.get(site.site_class, -1),
+        family=trained.families.get(site.row.family, -1),
+        explained=correction.explained.astype(np.float32),
+        variance=correction.variance,
+    )
+
+
+def overlap(first: Footprint, second: Footprint) -> float:
+    """Sum of the weights of the features that two sites share."""
+    _, here, _ = np.intersect1d(first.features, second.features, return_indices=True)
+    return float(first.weights[here].sum(dtype=np.float64))
+
+
+def posterior_covariance(first: Footprint, second: Footprint) -> float:
+    """Covariance of the corrections of two sites, given the measured values [pK units squared].
+
+    Without the scatter of single compounds, which two compounds don't share.
+    """
+    if first.group != second.group:
+        return 0.0
+    trained = model()
+    pair = (first, second)
+    prior = trained.kernel.covariance(
+        np.array([[overlap(first, second)]]),
+        *(
+            (np.array([getattr(pair[0], name)]), np.array([getattr(pair[1], name)]))
+            for name in ("total", "value", "site_class", "family")
+        ),
+    )
+    scale = trained.groups[first.group].scale if first.group in trained.groups else 1.0
+    along = first.explained.astype(np.float64) @ second.explained.astype(np.float64)
+    return scale * float(prior[0, 0]) - float(along)
+
+
+@dataclass(frozen=True, slots=True)
+class Standing:
+    """First constant of one compound as the order of a list sees it: value [-], half of its 90 % interval, carrier."""
+
+    value: float
+    half_width: float
+    footprint: Footprint
+
+
+def above(first: Standing, second: Standing) -> float:
+    r"""Probability that the first compound is truly more basic than the second.
+
+    .. math:: P = \Phi\left(\frac{a - b}{\sqrt{\sigma_a^2 + \sigma_b^2 - 2 \rho \sigma_a \sigma_b}}\right)
+
+    with the correlation of the corrections of the two carriers as rho.
+
+    Parameters
+    ----------
+    first, second : Standing
+        The two compounds.
+
+    Returns
+    -------
+    float
+        0 to 1; one half for equal constants.
+    """
+    one, other = first.half_width / NINETY, second.half_width / NINETY
+    shared = posterior_covariance(first.footprint, second.footprint)
+    correlation = shared / math.sqrt(first.footprint.variance * second.footprint.variance)
+    variance = one**2 + other**2 - 2.0 * min(max(correlation, -1.0), 1.0) * one * other
+    difference = first.value - second.value
+    if variance <= 1e-12:
+        return 0.5 if abs(difference) < 1e-9 else float(difference > 0)
+    return 0.5 * math.erfc(-difference / math.sqrt(2.0 * variance))
+
+
+def above_next(standings: Sequence[Standing | None]) -> list[float | None]:
+    """For each compound of a ranked list the probability that it is truly more basic than the next.
+
+    Parameters
+    ----------
+    standings : sequence of Standing or None
+        In the order of the rank; None for a compound without a first constant.
+
+    Returns
+    -------
+    list of float or None
+        None for the last compound, and where either has no constant.
+    """
+    pairs = zip(standings, [*standings[1:], None], strict=False)
+    return [None if one is None or other is None else above(one, other) for one, other in pairs]
