@@ -44,6 +44,9 @@ def wheel(tmp_path_factory: pytest.TempPathFactory) -> Path:
     return built
 
 
+DEVELOPERS_ONLY = ("holdout.csv", "guard.csv")
+
+
 def test_the_wheel_holds_the_tables_and_no_holdout(wheel: Path):
     with zipfile.ZipFile(wheel) as archive:
         names = set(archive.namelist())
@@ -51,9 +54,11 @@ def test_the_wheel_holds_the_tables_and_no_holdout(wheel: Path):
     for package, folder in homes.items():
         tables = [path.name for path in folder.iterdir() if path.suffix in (".csv", ".toml", ".smi", ".json")]
         for name in tables:
-            assert (f"basirank/{package}/{name}" in names) == (name != "holdout.csv"), f"{package}/{name}"
+            assert (f"basirank/{package}/{name}" in names) == (name not in DEVELOPERS_ONLY), (
+                f"{package}/{name}"
+            )
     assert "basirank/py.typed" in names
-    assert not any(name.endswith("holdout.csv") or name.startswith("tests/") for name in names)
+    assert not any(name.endswith(DEVELOPERS_ONLY) or name.startswith("tests/") for name in names)
 
 
 def test_the_installed_command_ranks_far_from_the_source(wheel: Path, tmp_path: Path):

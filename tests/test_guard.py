@@ -1,0 +1,73 @@
+"""No prediction moves unnoticed: 500 structures with their constants, charge and form, stored with the model."""
+
+from __future__ import annotations
+
+import csv
+import subprocess
+import sys
+from pathlib import Path
+
+import pytest
+
+ROOT = Path(__file__).resolve().parent.parent
+STORED = ROOT / "models" / "guard.csv"
+
+
+def guard(*arguments: str | Path) -> subprocess.CompletedProcess[str]:
+    return subprocess.run(
+        [sys.executable, str(ROOT / "scripts" / "guard"), *map(str, arguments)],
+        capture_output=True,
+        text=True,
+        check=False,
+        timeout=240,
+    )
+
+
+@pytest.fixture
+def disturbed(tmp_path: Path) -> Path:
+    """The first thirty stored rows, three of them changed."""
+    with STORED.open(encoding="utf-8", newline="") as handle:
+        rows = list(csv.DictReader(handle))[:30]
+    with_base = [row for row in rows if row["pkah_1"] and row["net_charge"]]
+    with_base[0]["pkah_1"] = f"{float(with_base[0]['pkah_1']) - 1.5:.2f}"
+    with_base[1]["net_charge"] = f"{float(with_base[1]['net_charge']) + 0.03:.2f}"
+    with_base[2]["pkah_1"] = f"{float(with_base[2]['pkah_1']) + 0.02:.2f}"
+    with_base[3]["dominant_form"] = "C"
+    path = tmp_path / "guard.csv"
+    with path.open("w", encoding="utf-8", newline="") as handle:
+        writer = csv.DictWriter(handle, rows[0], lineterminator="\n")
+        writer.writeheader()
+        writer.writerows(rows)
+    return path
+
+
+def test_predictions_are_those_that_were_accepted():
+    result = guard()
+    assert result.returncode == 0, result.stdout[-6000:] + result.stderr
+    assert result.stdout.startswith("500 structures: 0 numbers moved")
+
+
+def test_what_moved_is_listed_largest_first_and_fails(disturbed):
+    result = guard("--file", disturbed)
+    assert result.returncode == 1
+    lines = result.stdout.splitlines()
+    assert lines[1].startswith("  +1.50  pkah_1") and lines[2].startswith("  -0.03  net_charge")
+    assert "    was C" in lines
+    assert lines[-1].startswith(
+        "30 structures: 2 numbers moved by more than 0.02, came or went, 1 dominant forms"
+    )
+
+
+def test_accepting_stores_the_present_predictions(disturbed):
+    assert guard("--file", disturbed, "--accept").returncode == 0
+    assert (
+        disturbed.read_text(encoding="utf-8").splitlines()
+        == STORED.read_text(encoding="utf-8").splitlines()[:31]
+    )
+    assert guard("--file", disturbed).returncode == 0
+
+
+def test_a_file_that_is_none_is_one_line_on_standard_error(tmp_path):
+    result = guard("--file", tmp_path / "none.csv")
+    assert result.returncode == 2 and result.stdout == ""
+    assert result.stderr.startswith("guard: ") and result.stderr.count("\n") == 1
