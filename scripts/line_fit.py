@@ -17,6 +17,12 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from basirank.binding import binding_polynomial
+from basirank.conditions import (
+    IONIC_STRENGTH_RANGE,
+    STANDARD_TEMPERATURE,
+    TEMPERATURE_RANGE,
+    to_standard,
+)
 from basirank.increments import coefficients
 from basirank.interactions import Law, Paths, coupling_matrix, find_paths, prior_law
 from basirank.prediction import Lines, site_lines
@@ -80,12 +86,34 @@ def load(path: Path) -> list[Row]:
             if not 0 <= index < len(acid) or len(acid) > MOST_SITES:
                 print(f"skipped {record['name']}, {smiles}: no such step", file=sys.stderr)
                 continue
+            value = at_standard(record, sum(lines.graph.charge))
             keys = [[(term.key, term.descriptor) for term in terms] for terms in lines.terms]
             error = QUALITY_ERROR.get(record["quality"].lower(), 0.3)
-            rows.append(
-                Row(record, group, float(record["value"]), error, index, keys, lines, paths, exclusive, acid)
-            )
+            rows.append(Row(record, group, value, error, index, keys, lines, paths, exclusive, acid))
     return rows
+
+
+def at_standard(record: dict[str, str], fixed_charge: int) -> float:
+    """Measured value brought to 25 C and ionic strength 0; what isn't stated is taken as these.
+
+    A value at a temperature or an ionic strength out of reach of the laws stays as it is in that respect.
+    """
+    family = next(row.family for row in site_classes() if row.name == record["class"] and row.kind != "none")
+    temperature = float(record["temperature_c"] or STANDARD_TEMPERATURE)
+    strength = float(record["ionic_strength"] or 0.0)
+    return float(
+        to_standard(
+            float(record["value"]),
+            family=family,
+            acid_charge=int(record["acid_charge"]) + fixed_charge,
+            temperature=temperature if _within(temperature, TEMPERATURE_RANGE) else STANDARD_TEMPERATURE,
+            ionic_strength=strength if _within(strength, IONIC_STRENGTH_RANGE) else 0.0,
+        )
+    )
+
+
+def _within(value: float, ends: tuple[float, float]) -> bool:
+    return ends[0] <= value <= ends[1]
 
 
 def priors() -> dict[tuple[str, str, str], tuple[float, float, str]]:
