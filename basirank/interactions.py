@@ -40,9 +40,12 @@ class Law:
     parallel_paths : float
         Share that each further shortest path adds [-].
     acid_share : float
-        Factor for each acid whose anion is shared by its oxygens [-].
+        Factor for each acid whose anion is shared by its oxygens or a ring [-].
     ring : ndarray, shape (3,)
         W of two nitrogens of one aromatic ring, neighbours, 1,3 and 1,4 [pK units].
+    hydrogen_bond : float
+        Added where the anion of one acid holds the proton of the other: salicylic acid, peri-dihydroxynaphthalene
+        [pK units].
     shared_proton : float
         Added where geometry holds one proton between the two sites [pK units].
     """
@@ -53,6 +56,7 @@ class Law:
     parallel_paths: float
     acid_share: float
     ring: NDArray[np.float64]
+    hydrogen_bond: float
     shared_proton: float
 
 
@@ -67,6 +71,7 @@ def prior_law() -> Law:
         table["parallel_paths"]["value"],
         table["delocalised_acid"]["value"],
         np.array(table["same_ring"]["values"]),
+        table["hydrogen_bond"]["value"],
         table["shared_proton"]["value"],
     )
 
@@ -89,6 +94,7 @@ def law() -> Law:
         refined.get(("parallel", 0), prior.parallel_paths),
         refined.get(("acid share", 0), prior.acid_share),
         updated("ring", prior.ring),
+        refined.get(("hydrogen bond", 0), prior.hydrogen_bond),
         prior.shared_proton,
     )
 
@@ -102,9 +108,10 @@ class Paths:
     bonds, conjugated, count : ndarray of int, shape (n, n)
         Bonds on a shortest path (0: the same atom), how many of them are conjugated, number of shortest paths.
     acids : ndarray of int, shape (n, n)
-        Number of sites of the pair whose anion is shared by its oxygens.
+        Number of sites of the pair whose anion is shared by its oxygens or a ring.
     special : ndarray of int, shape (n, n)
-        1 for two nitrogens of one aromatic ring, 2 for two sites with one proton or one lone pair between them, else 0.
+        1 for two nitrogens of one aromatic ring, 2 for two sites with one proton or one lone pair between them, 3 for
+        two acids with a hydrogen bond between them, else 0.
     """
 
     bonds: NDArray[np.int64]
@@ -146,6 +153,7 @@ def coupling_matrix(paths: Paths, rule: Law) -> NDArray[np.float64]:
     in_ring = rule.ring[np.clip(paths.bonds, 1, len(rule.ring)) - 1]
     coupling = np.where(paths.special == SAME_RING, in_ring, coupling)
     coupling = coupling + np.where(paths.special == SHARED_PROTON, rule.shared_proton, 0.0)
+    coupling = coupling + np.where(paths.special == HYDROGEN_BOND, rule.hydrogen_bond, 0.0)
     return coupling * (1.0 - np.eye(paths.bonds.shape[-1]))
 
 
@@ -199,7 +207,10 @@ def _paths_from(
 Pair = tuple[int, int, int, int, int]
 """Bonds, conjugated bonds, number of shortest paths, acids and special relation of two sites, as in `Paths`."""
 
-SAME_RING, SHARED_PROTON = 1, 2
+SAME_RING, SHARED_PROTON, HYDROGEN_BOND = 1, 2, 3
+
+_BOND_RING = 4
+"""Bonds between the two oxygens of a hydrogen bond that closes a six-membered ring."""
 
 
 def _one_azole(graph: Graph, first: int, second: int) -> bool:
@@ -209,8 +220,23 @@ def _one_azole(graph: Graph, first: int, second: int) -> bool:
     return any(beside or len(graph.rings[ring]) == 5 for ring in shared)
 
 
-def _special(graph: Graph, first: Site, second: Site) -> int:
-    """Whether two sites are nitrogens of one aromatic ring, or have one proton or one lone pair between them."""
+def _hydrogen_bond(graph: Graph, first: Site, second: Site) -> bool:
+    """Whether two acids four bonds apart stand ortho (hydroxyl and carboxyl or sulfo) or peri (two hydroxyls)."""
+    families = {first.row.family, second.row.family}
+    if "phenol" not in families:
+        return False
+    if families & _families("hydrogen_bond"):
+        return True
+    (one, _), *_ = graph.neighbours[first.atom]
+    (other, _), *_ = graph.neighbours[second.atom]
+    return families == {"phenol"} and not graph.ring_bond(one, other)
+
+
+def _special(graph: Graph, first: Site, second: Site, distance: int) -> int:
+    """What relation two sites have beside their distance: see `Paths.special`."""
+    if first.kind == second.kind == "acid":
+        bonded = distance == _BOND_RING and _hydrogen_bond(graph, first, second)
+        return HYDROGEN_BOND if bonded else 0
     if graph.element[first.atom] == 6 == graph.element[second.atom]:
         feeding = {atom for atom in first.core if graph.element[atom] == 7}
         if first.kind == second.kind == "base" and not feeding.isdisjoint(second.core):
@@ -225,7 +251,7 @@ def _special(graph: Graph, first: Site, second: Site) -> int:
 def site_pairs(graph: Graph, sites: Sequence[Site]) -> dict[tuple[int, int], tuple[Pair, bool]]:
     """Path between the sites of each pair i < j, and whether they are one tautomeric unit (see `find_paths`)."""
     centres = [_centre(site) for site in sites]
-    oxygens = [site.row.family in _families("delocalised_acid") for site in sites]
+    shared = [site.row.family in _families("delocalised_acid") for site in sites]
     pairs = {}
     for i, first in enumerate(sites[:-1]):
         distance, number, along = _paths_from(graph, centres[i], centres[i + 1 :])
@@ -244,8 +270,8 @@ def site_pairs(graph: Graph, sites: Sequence[Site]) -> dict[tuple[int, int], tup
                 in_ring = graph.kind[base.atom] == "n" == graph.kind[acid.atom]
                 shift = shift or (in_ring and _one_azole(graph, base.atom, acid.atom))
                 exclusive = shift or acid.atom in base.core
-            acids = oxygens[i] + oxygens[j]
-            special = _special(graph, first, second)
+            acids = shared[i] + shared[j]
+            special = _special(graph, first, second, distance[other])
             pairs[i, j] = (distance[other], along[other], number[other], acids, special), exclusive
     return pairs
 

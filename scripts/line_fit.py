@@ -162,15 +162,15 @@ class Fit:
             [("saturated", bonds + 1) for bonds in range(len(rule.saturated))]
             + [("conjugated", bonds + 1) for bonds in range(len(rule.conjugated))]
             + [("ring", bonds + 1) for bonds in range(len(rule.ring))]
-            + [("parallel", 0), ("acid share", 0)]
+            + [("parallel", 0), ("acid share", 0), ("hydrogen bond", 0)]
         )
         law_start = np.log(
-            [*rule.saturated, *rule.conjugated, *rule.ring, rule.parallel_paths, rule.acid_share]
+            [*rule.saturated, *rule.conjugated, *rule.ring, rule.parallel_paths, rule.acid_share, rule.hydrogen_bond]
         )
         self.lines = len(self.names)
         self.mean = np.concatenate([[prior[key][0] for key in self.names], law_start])
         self.sd = np.concatenate([[prior[key][1] for key in self.names], np.full(len(law_start), LAW_SD)])
-        self.sd[-1] = 0.08
+        self.sd[-2] = 0.08  # of the acid share, a factor near one
         self.rows = rows
         self.design = []
         for row in rows:
@@ -192,16 +192,24 @@ class Fit:
             saturated,
             np.maximum(values[n : 2 * n], saturated),  # nor less along a conjugated path than along a chain
             prior.beyond,
+            float(values[-3]),
             float(values[-2]),
+            values[2 * n : -3],
             float(values[-1]),
-            values[2 * n : -2],
             prior.shared_proton,
         )
 
     def law_values(self, theta: np.ndarray) -> list[float]:
         """Values of the law in the order of `law_names`."""
         rule = self.law(theta)
-        return [*rule.saturated, *rule.conjugated, *rule.ring, rule.parallel_paths, rule.acid_share]
+        return [
+            *rule.saturated,
+            *rule.conjugated,
+            *rule.ring,
+            rule.parallel_paths,
+            rule.acid_share,
+            rule.hydrogen_bond,
+        ]
 
     def macroscopic(self, theta: np.ndarray, members: np.ndarray, by_law: bool = True) -> Through:
         """Predicted constants of rows and their derivatives by the parameters and by the intrinsic constants."""
