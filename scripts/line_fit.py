@@ -10,6 +10,7 @@ from __future__ import annotations
 import csv
 import sys
 from collections import defaultdict
+from collections.abc import Iterable
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -60,36 +61,41 @@ class Row:
 
 
 def load(path: Path) -> list[Row]:
-    """Read the measured table and find the macroscopic step that each value belongs to."""
+    """Read a table in the columns of `data/measured.csv`."""
+    with path.open(encoding="utf-8", newline="") as handle:
+        return rows_of(csv.DictReader(handle))
+
+
+def rows_of(records: Iterable[dict[str, str]]) -> list[Row]:
+    """Find the macroscopic step that each value belongs to."""
     rows: list[Row] = []
     parents: dict[str, tuple[str, Lines, Paths, np.ndarray] | None] = {}
-    with path.open(encoding="utf-8", newline="") as handle:
-        for record in csv.DictReader(handle):
-            smiles = record["smiles"]
-            if smiles not in parents:
-                try:
-                    parent = read_parent(smiles)
-                except Refusal as reason:
-                    print(f"skipped {smiles}: {reason}", file=sys.stderr)
-                    parents[smiles] = None
-                    continue
-                lines = site_lines(parent)
-                paths, exclusive = find_paths(lines.graph, lines.sites)
-                none = np.zeros((len(lines.sites), len(lines.sites)), dtype=bool)
-                parents[smiles] = (parent.smiles, lines, paths, none if exclusive is None else exclusive)
-            known = parents[smiles]
-            if known is None:
+    for record in records:
+        smiles = record["smiles"]
+        if smiles not in parents:
+            try:
+                parent = read_parent(smiles)
+            except Refusal as reason:
+                print(f"skipped {smiles}: {reason}", file=sys.stderr)
+                parents[smiles] = None
                 continue
-            group, lines, paths, exclusive = known
-            acid = np.array([site.kind == "acid" for site in lines.sites], dtype=bool)
-            index = int(acid.sum()) + int(record["acid_charge"]) - 1
-            if not 0 <= index < len(acid) or len(acid) > MOST_SITES:
-                print(f"skipped {record['name']}, {smiles}: no such step", file=sys.stderr)
-                continue
-            value = at_standard(record, sum(lines.graph.charge))
-            keys = [[(term.key, term.descriptor) for term in terms] for terms in lines.terms]
-            error = QUALITY_ERROR.get(record["quality"].lower(), 0.3)
-            rows.append(Row(record, group, value, error, index, keys, lines, paths, exclusive, acid))
+            lines = site_lines(parent)
+            paths, exclusive = find_paths(lines.graph, lines.sites)
+            none = np.zeros((len(lines.sites), len(lines.sites)), dtype=bool)
+            parents[smiles] = (parent.smiles, lines, paths, none if exclusive is None else exclusive)
+        known = parents[smiles]
+        if known is None:
+            continue
+        group, lines, paths, exclusive = known
+        acid = np.array([site.kind == "acid" for site in lines.sites], dtype=bool)
+        index = int(acid.sum()) + int(record["acid_charge"]) - 1
+        if not 0 <= index < len(acid) or len(acid) > MOST_SITES:
+            print(f"skipped {record['name']}, {smiles}: no such step", file=sys.stderr)
+            continue
+        value = at_standard(record, sum(lines.graph.charge))
+        keys = [[(term.key, term.descriptor) for term in terms] for terms in lines.terms]
+        error = QUALITY_ERROR.get(record["quality"].lower(), 0.3)
+        rows.append(Row(record, group, value, error, index, keys, lines, paths, exclusive, acid))
     return rows
 
 
