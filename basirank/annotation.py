@@ -25,6 +25,7 @@ from .records import (
     structure_column,
     unclashed,
 )
+from .request import PLAIN, Conditions, Request
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -34,7 +35,7 @@ if TYPE_CHECKING:
 CHUNK = 500  # structures that go through the stages together: enough to fill the blocks of the regression
 
 
-def records_of(structures: Sequence[object], ph: Sequence[float]) -> list[Record]:
+def records_of(structures: Sequence[object], ph: Sequence[float], request: Request = PLAIN) -> list[Record]:
     """One record for each structure of a batch.
 
     Parameters
@@ -43,17 +44,21 @@ def records_of(structures: Sequence[object], ph: Sequence[float]) -> list[Record
         SMILES or RDKit molecules; anything else (None, NaN, a number) becomes a refused record.
     ph : sequence of float
         pH values [-], checked already.
+    request : Request
+        Conditions and further columns.
     """
-    return [found for found, _ in _computed(structures, ph, standings=False)]
+    return [found for found, _ in _computed(structures, ph, request, standings=False)]
 
 
-def standings_of(structures: Sequence[object], ph: Sequence[float]) -> list[tuple[Record, Standing | None]]:
+def standings_of(
+    structures: Sequence[object], ph: Sequence[float], request: Request = PLAIN
+) -> list[tuple[Record, Standing | None]]:
     """The same records, each with what the order of a list needs to know of its first constant (`kinship`)."""
-    return _computed(structures, ph, standings=True)
+    return _computed(structures, ph, request, standings=True)
 
 
 def _computed(
-    structures: Sequence[object], ph: Sequence[float], standings: bool
+    structures: Sequence[object], ph: Sequence[float], request: Request, standings: bool
 ) -> list[tuple[Record, Standing | None]]:
     from rdkit import Chem
 
@@ -67,12 +72,13 @@ def _computed(
         part = readable[start : start + CHUNK]
         batch: list[Any] = [structures[n] for n in part]
         with _collector_at_rest():
-            predictions = predict(batch, ph=ph, standings=standings)
+            predictions = predict(batch, ph=ph, conditions=request.conditions, standings=standings)
             found.update(
-                (n, (record(one, ph), one.standing)) for n, one in zip(part, predictions, strict=True)
+                (n, (record(one, ph, request), one.standing))
+                for n, one in zip(part, predictions, strict=True)
             )
     return [
-        found[n] if n in found else (refused_record(_why_unread(item), ph), None)
+        found[n] if n in found else (refused_record(_why_unread(item), ph, request), None)
         for n, item in enumerate(structures)
     ]
 
@@ -99,7 +105,15 @@ def _why_unread(item: object) -> str:
     return "no structure given" if missing else f"neither a SMILES nor a molecule: {type(item).__name__}"
 
 
-def annotate(structures: Iterable[object], *, ph: float | Iterable[float] = 7.4) -> pd.DataFrame:
+def annotate(
+    structures: Iterable[object],
+    *,
+    ph: float | Iterable[float] = 7.4,
+    temperature: float = 25.0,
+    ionic_strength: float = 0.0,
+    forms: bool = False,
+    show_pkb: bool = False,
+) -> pd.DataFrame:
     """Constants, first site and protonation state of each structure.
 
     Parameters
@@ -108,6 +122,12 @@ def annotate(structures: Iterable[object], *, ph: float | Iterable[float] = 7.4)
         A list, array, pandas Series or one structure alone. Missing and unreadable entries are rows too.
     ph : float or iterable of float
         pH of the state columns [-], -2 to 16; several give columns with `_at_<pH>`.
+    temperature, ionic_strength : float
+        Of the constants and states [C], 0 to 60, and [mol/L], 0 to 0.5; `message` states them when used.
+    forms : bool
+        Add the shares of the neutral form and of the zwitterion.
+    show_pkb : bool
+        Add pKb beside pKaH.
 
     Returns
     -------
@@ -121,11 +141,19 @@ def annotate(structures: Iterable[object], *, ph: float | Iterable[float] = 7.4)
     """
     items, index = _listed(structures)
     values = clean_ph(ph)
-    return _frame(records_of(items, values), schema(values), index)
+    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb)
+    return _frame(records_of(items, values, request), schema(values, request=request), index)
 
 
 def annotate_frame(
-    frame: pd.DataFrame, *, smiles_column: str = "smiles", ph: float | Iterable[float] = 7.4
+    frame: pd.DataFrame,
+    *,
+    smiles_column: str = "smiles",
+    ph: float | Iterable[float] = 7.4,
+    temperature: float = 25.0,
+    ionic_strength: float = 0.0,
+    forms: bool = False,
+    show_pkb: bool = False,
 ) -> pd.DataFrame:
     """The rows of a frame with the columns of `annotate` after their own.
 
@@ -140,15 +168,18 @@ def annotate_frame(
         Column that holds the structures, in any letter case.
     ph : float or iterable of float
         pH of the state columns [-], -2 to 16.
+    temperature, ionic_strength, forms, show_pkb
+        As for `annotate`.
 
     Raises
     ------
     ValueError
-        No such column (the message lists those there are), or a wrong pH.
+        No such column (the message lists those there are), a wrong pH or wrong conditions.
     """
     values = clean_ph(ph)
-    records = records_of(_structures_of(frame, smiles_column), values)
-    return _beside(frame, records, schema(values))
+    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb)
+    records = records_of(_structures_of(frame, smiles_column), values, request)
+    return _beside(frame, records, schema(values, request=request))
 
 
 def rank(
@@ -156,6 +187,10 @@ def rank(
     *,
     smiles_column: str = "smiles",
     ph: float | Iterable[float] = 7.4,
+    temperature: float = 25.0,
+    ionic_strength: float = 0.0,
+    forms: bool = False,
+    show_pkb: bool = False,
 ) -> pd.DataFrame:
     """The same rows sorted by the first pKaH, strongest base first, with their `rank` in front.
 
@@ -169,6 +204,8 @@ def rank(
         Column that holds the structures when a frame is given.
     ph : float or iterable of float
         pH of the state columns [-], -2 to 16.
+    temperature, ionic_strength, forms, show_pkb
+        As for `annotate`.
 
     Returns
     -------
@@ -178,20 +215,21 @@ def rank(
     Raises
     ------
     ValueError
-        A wrong pH, or a frame without such a column.
+        A wrong pH, wrong conditions, or a frame without such a column.
     """
     import pandas as pd
 
     from .kinship import above_next
 
     values = clean_ph(ph)
-    columns = schema(values, ranked=True)
+    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb)
+    columns = schema(values, ranked=True, request=request)
     frame = structures if isinstance(structures, pd.DataFrame) else None
     if frame is not None:
         items, index = _structures_of(frame, smiles_column), frame.index
     else:
         items, index = _listed(structures)
-    found = standings_of(items, values)
+    found = standings_of(items, values, request)
     order = ranking([row for row, _ in found])
     positions = [n for _, n in order]
     surer = above_next([found[n][1] for n in positions])

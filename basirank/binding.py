@@ -88,6 +88,7 @@ class BindingPolynomial:
     log_z: Floats  # (m, n + 1): log10 of the coefficient of N protons
     occupancy: Floats  # (m, n + 1, n): mean proton on each site among the microstates with N protons
     base_share: Floats  # (m, n + 1): share of those with at least one proton on a base site
+    neutral_log: Floats  # (m,): log10 of the weight of the microstate with every site neutral
     top: Integers  # (m, n + 1): the most populated microstate with N protons (index into microstates(n))
     top_log: Floats  # (m, n + 1): log10 of its weight
     interaction: Floats  # (m, n + 1): mean of sum W q q among the microstates with N protons [pK units]
@@ -223,6 +224,7 @@ def binding_polynomial(
         log_z=top_log + np.log10(total),
         occupancy=occupancy,
         base_share=np.add.reduceat(on_base, table.first, axis=1) / total,
+        neutral_log=np.where(is_acid, pk, 0.0).sum(axis=1),
         top=np.minimum.reduceat(candidates, table.first, axis=1),
         top_log=top_log,
         interaction=interaction,
@@ -246,6 +248,8 @@ class MeanField:
     protonated: Floats  # (h,)
     dominant: Booleans  # (h, n)
     dominant_share: Floats  # (h,)
+    neutral: Floats  # (h,): share with every site neutral
+    counts: Floats  # (h, n + 1): share with N protons
 
 
 @dataclass(frozen=True, slots=True)
@@ -448,6 +452,8 @@ def mean_field(
         protonated=np.empty(len(ph)),
         dominant=np.empty((len(ph), n), dtype=bool),
         dominant_share=np.empty(len(ph)),
+        neutral=np.empty(len(ph)),
+        counts=np.empty((len(ph), n + 1)),
     )
     for k in range(len(ph)):  # one by one: the answer at one pH doesn't depend on which others are asked for
         at = ph[k : k + 1]
@@ -458,6 +464,13 @@ def mean_field(
             bare = ~(part.held[part.acid == 0.0] > 0.0).any(axis=0)
             on_no_base += float(np.log(np.maximum(share[bare].sum(), 1e-300)))
         answer.protonated[k] = min(max(-np.expm1(on_no_base), 0.0), 1.0)
+        answer.counts[k] = _count_shares(parts, shares)[0]
+        answer.neutral[k] = np.prod(
+            [
+                share[(part.held == part.acid[:, None]).all(axis=0)].sum()
+                for part, (share,) in zip(parts, shares, strict=True)
+            ]
+        )
         chosen = _most_populated(parts, charges, shares, at)
         answer.dominant_share[k] = np.prod([share[0, s] for share, s in zip(shares, chosen, strict=True)])
         for part, state in zip(parts, chosen, strict=True):

@@ -15,17 +15,12 @@ from typing import Any, Literal
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from .request import IONIC_STRENGTH_RANGE, STANDARD_TEMPERATURE, TEMPERATURE_RANGE, Conditions, within
 from .tables import read_table
 
 Floats = NDArray[np.float64]
 Kind = Literal["mixed", "concentration"]
 
-STANDARD_TEMPERATURE = 25.0
-"""Temperature of the constants of this package [C]."""
-TEMPERATURE_RANGE = (0.0, 60.0)
-"""Temperatures that may be asked for [C]: those of the laws of water below."""
-IONIC_STRENGTH_RANGE = (0.0, 0.5)
-"""Ionic strengths that may be asked for [mol/L]: where the Davies equation holds."""
 PKW = 14.00
 """Ion product of water at 25 C and ionic strength 0, as used in pKb = 14.00 - pKaH [-]; measured 13.995."""
 
@@ -66,19 +61,12 @@ def check_conditions(temperature: ArrayLike, ionic_strength: ArrayLike) -> None:
     Traceback (most recent call last):
     ValueError: temperature must lie between 0 and 60 C, not 70
     """
-    for name, value, (lowest, highest), unit in (
+    for name, value, limits, unit in (
         ("temperature", temperature, TEMPERATURE_RANGE, "C"),
         ("ionic strength", ionic_strength, IONIC_STRENGTH_RANGE, "mol/L"),
     ):
-        try:
-            numbers = np.asarray(value, dtype=np.float64)
-        except (TypeError, ValueError):
-            raise ValueError(f"{name} must be a number, not {value!r}") from None
-        outside = numbers[~((numbers >= lowest) & (numbers <= highest))]
-        if outside.size:
-            raise ValueError(
-                f"{name} must lie between {lowest:g} and {highest:g} {unit}, not {outside.flat[0]:g}"
-            )
+        for number in np.asarray(value).ravel().tolist():
+            within(name, number, limits, unit)
 
 
 def relative_permittivity(temperature: ArrayLike) -> Floats:
@@ -345,6 +333,60 @@ def to_standard(
     charged = measured - ionic_strength_shift(acid_charge, ionic_strength, temperature=temperature, kind=kind)
     factor, shift = _warmed(family, temperature)
     return ((charged - np.asarray(interaction) - shift) / factor + np.asarray(interaction))[()]
+
+
+def sites_at(
+    pk: Floats,
+    coupling: Floats,
+    *,
+    is_acid: NDArray[np.bool_],
+    families: Iterable[str],
+    fixed_charge: int,
+    conditions: Conditions,
+) -> tuple[Floats, Floats]:
+    r"""Intrinsic constants and couplings of the sites of one molecule at given conditions.
+
+    Temperature moves each intrinsic constant by the law of its family; the coupling, the energy of two charges,
+    stays (see `at_temperature`). In the Davies equation a microstate of net charge Q = f + sum q_i (f the fixed
+    charge) gains the weight A f(I) Q^2, which is the same as
+
+    .. math:: \Delta\mathrm{pK}_i = (\pm 1 + 2f)\,A f(I), \qquad \Delta W_{ij} = -2 A f(I)
+
+    with + for a base and - for an acid. Each macroscopic constant is then shifted by (2z - 1) A f(I), z the
+    charge of its acid form: a mixed constant, to be read against the pH of a meter.
+
+    Parameters
+    ----------
+    pk : ndarray, shape (n,)
+        Intrinsic constants at 25 C and ionic strength 0 [-].
+    coupling : ndarray, shape (n, n)
+        W [pK units], symmetric.
+    is_acid : ndarray of bool, shape (n,)
+    families : iterable of str, length n
+    fixed_charge : int
+        Formal charge of the parent, all sites neutral.
+    conditions : Conditions
+
+    Returns
+    -------
+    tuple of ndarray
+        The constants and the couplings at the conditions.
+
+    Examples
+    --------
+    1,2-Diaminoethane at 0.1 mol/L: 9.93 and 6.85 become 10.04 and 7.17.
+
+    >>> pk, w = sites_at(np.array([9.63, 9.63]), np.array([[0.0, 2.48], [2.48, 0.0]]),
+    ...                  is_acid=np.array([False, False]), families=["primary", "primary"], fixed_charge=0,
+    ...                  conditions=Conditions(ionic_strength=0.1))
+    >>> pk.round(2), w.round(2)
+    (array([9.74, 9.74]), array([[0.  , 2.27],
+           [2.27, 0.  ]]))
+    """
+    warmed = at_temperature(pk, families, conditions.temperature)
+    unit = davies(conditions.ionic_strength, conditions.temperature)
+    own = np.where(is_acid, -1.0, 1.0) + 2.0 * fixed_charge
+    return warmed + own * unit, coupling - 2.0 * unit * (1.0 - np.eye(len(pk)))
 
 
 def pkw(temperature: ArrayLike = STANDARD_TEMPERATURE, ionic_strength: ArrayLike = 0.0) -> Any:

@@ -84,6 +84,8 @@ class State:
     protonated_fraction: float  # share of molecules with at least one proton on a base site
     dominant: tuple[bool, ...]  # proton on each site in the most populated microstate
     dominant_fraction: float
+    neutral_fraction: float  # share of molecules without any charge
+    zwitterion_fraction: float  # share of molecules whose charges, fixed ones included, add up to none
 
 
 @dataclass(frozen=True, slots=True)
@@ -184,6 +186,7 @@ class Populations:
     dominant: Booleans  # (m, h, n): protons of the most populated microstate
     dominant_share: Floats  # (m, h)
     counts: Floats  # (m, h, n + 1): share of molecules with N protons
+    neutral: Floats  # (m, h): share of molecules with every site neutral
 
 
 def populations(polynomial: BindingPolynomial, ph: ArrayLike) -> Populations:
@@ -223,7 +226,47 @@ def populations(polynomial: BindingPolynomial, ph: ArrayLike) -> Populations:
         dominant=microstates(n).protons.T[polynomial.top[row, best]],
         dominant_share=np.minimum((np.exp(LN10 * share) / total)[:, :, 0], 1.0),
         counts=shares,
+        neutral=np.exp(
+            LN10
+            * (
+                polynomial.neutral_log[:, None]
+                - polynomial.is_acid.sum(axis=1)[:, None] * ph
+                - highest[:, :, 0]
+            )
+        )
+        / total[:, :, 0],
     )
+
+
+def uncharged(
+    counts: Floats, neutral: Floats, acids: Integers, fixed_charge: Integers
+) -> tuple[Floats, Floats]:
+    """Shares of the neutral form and of the zwitterion.
+
+    The net charge of N protons is N less the number of acids plus the fixed charge. Of the molecules without net
+    charge those with every site neutral are the neutral form, unless a fixed charge is among them; the rest is
+    zwitterion.
+
+    Parameters
+    ----------
+    counts : ndarray, shape (m, h, n + 1)
+        Share of molecules with N protons.
+    neutral : ndarray, shape (m, h)
+        Share of molecules with every site neutral.
+    acids, fixed_charge : ndarray of int, shape (m,)
+        Number of acid sites; formal charge with every site neutral.
+
+    Returns
+    -------
+    tuple of ndarray, shape (m, h)
+        Neutral form and zwitterion.
+    """
+    protons = acids - fixed_charge
+    most = counts.shape[2] - 1
+    found = np.take_along_axis(counts, np.clip(protons, 0, most)[:, None, None], axis=2)[:, :, 0]
+    netless = np.where(((protons >= 0) & (protons <= most))[:, None], found, 0.0)
+    form = np.where((fixed_charge == 0)[:, None], np.minimum(neutral, netless), 0.0)
+    return form, netless - form
 
 
 def base_steps(gain: Floats, is_acid: Booleans) -> Booleans:
@@ -279,7 +322,8 @@ def carriers(gain: Floats, top_protons: Booleans, is_acid: Booleans, base_step: 
 
 def _without_sites(sites: SiteSet, ph: list[float]) -> Equilibrium:
     charge = float(sites.fixed_charge)
-    return Equilibrium((), tuple(State(value, charge, 0.0, (), 1.0) for value in ph), False)
+    neutral = float(charge == 0.0)
+    return Equilibrium((), tuple(State(value, charge, 0.0, (), 1.0, neutral, 0.0) for value in ph), False)
 
 
 def _arrays(sets: list[SiteSet], n: int) -> tuple[Floats, Booleans, Floats, Booleans | None]:
@@ -304,19 +348,23 @@ def _exact(sets: list[SiteSet], n: int, ph: list[float]) -> list[Equilibrium]:
     carrier = carriers(gain, polynomial.top_protons, acid, base_step)
     at = populations(polynomial, ph)
     steps = _steps(polynomial.constants, gain, polynomial.strain, base_step, carrier, sets)
+    fixed = np.array([sites.fixed_charge for sites in sets], dtype=np.int64)
+    neutral, zwitterion = uncharged(at.counts, at.neutral, acid.sum(axis=1), fixed)
     states = zip(
         at.charge.tolist(),
         at.protonated.tolist(),
         at.dominant.tolist(),
         at.dominant_share.tolist(),
+        neutral.tolist(),
+        zwitterion.tolist(),
         strict=True,
     )
     return [
         Equilibrium(
             ladder,
             tuple(
-                State(value, charge + sites.fixed_charge, protonated, tuple(dominant), share)
-                for value, charge, protonated, dominant, share in zip(ph, *state, strict=True)
+                State(value, charge + sites.fixed_charge, protonated, tuple(dominant), share, *netless)
+                for value, charge, protonated, dominant, share, *netless in zip(ph, *state, strict=True)
             ),
             False,
         )
@@ -333,14 +381,19 @@ def _clustered(sites: SiteSet, ph: list[float]) -> Equilibrium:
     ladder = _steps(
         answer.constants[None], answer.gain[None], answer.strain[None], base_step, carrier, [sites]
     )[0]
+    neutral, zwitterion = uncharged(
+        answer.counts[None], answer.neutral[None], acid.sum(axis=1), np.array([sites.fixed_charge])
+    )
     states = tuple(
-        State(value, charge + sites.fixed_charge, protonated, tuple(dominant), share)
-        for value, charge, protonated, dominant, share in zip(
+        State(value, charge + sites.fixed_charge, protonated, tuple(dominant), share, *netless)
+        for value, charge, protonated, dominant, share, *netless in zip(
             ph,
             answer.charge.tolist(),
             answer.protonated.tolist(),
             answer.dominant.tolist(),
             answer.dominant_share.tolist(),
+            neutral[0].tolist(),
+            zwitterion[0].tolist(),
             strict=True,
         )
     )

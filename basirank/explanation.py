@@ -224,12 +224,11 @@ def _evidence(prediction: Prediction, place: int) -> tuple[Analogue, ...]:
 
 def _interactions(prediction: Prediction) -> tuple[tuple[int, int, float], ...]:
     """Pairs of site numbers with their W, largest first; pairs too far apart to matter are left out."""
-    if prediction.coupling is None:
+    if prediction.sites is None:
         return ()
+    coupling = prediction.sites.coupling
     count = len(prediction.estimates)
-    pairs = (
-        (i + 1, j + 1, float(prediction.coupling[i, j])) for i in range(count) for j in range(i + 1, count)
-    )
+    pairs = ((i + 1, j + 1, float(coupling[i, j])) for i in range(count) for j in range(i + 1, count))
     felt = (pair for pair in pairs if abs(pair[2]) >= LEAST_SHOWN)
     return tuple(sorted(felt, key=lambda pair: (-abs(pair[2]), pair[:2])))
 

@@ -13,12 +13,14 @@ from typing import Literal
 import numpy as np
 from rdkit import Chem, rdBase
 
+from .conditions import sites_at
 from .equilibrium import Equilibrium, SiteSet, equilibrate
 from .forms import form_smiles
 from .graph import Graph, build_graph
 from .increments import Estimate, Term, site_terms, sum_of
 from .interactions import couple
 from .kinship import Standing, footprint
+from .request import STANDARD, Conditions
 from .residual import Correction, corrections, model
 from .sites import Site, find_sites
 from .structures import Parent, Refusal, read_parent
@@ -70,8 +72,8 @@ class Prediction:
         The neutral parent.
     estimates : tuple of Estimate
         One for each site, in the order of the equilibrium.
-    coupling : ndarray, shape (n_sites, n_sites), or None
-        Interaction W [pK units].
+    sites : SiteSet or None
+        The sites as the equilibrium took them, at the conditions.
     equilibrium : Equilibrium or None
         Macroscopic constants and states.
     forms : tuple of str
@@ -86,7 +88,7 @@ class Prediction:
     message: str
     parent: Parent | None
     estimates: tuple[Estimate, ...]
-    coupling: np.ndarray | None
+    sites: SiteSet | None
     equilibrium: Equilibrium | None
     forms: tuple[str, ...]
     lines: Lines | None = None
@@ -157,22 +159,38 @@ def standing_of(lines: Lines, found: Sequence[Correction], equilibrium: Equilibr
     )
 
 
-def site_set(lines: Lines, estimates: Sequence[Estimate]) -> SiteSet:
-    """Sites of one parent as the equilibrium takes them, with their couplings."""
+def site_set(lines: Lines, estimates: Sequence[Estimate], conditions: Conditions = STANDARD) -> SiteSet:
+    """Sites of one parent as the equilibrium takes them, with their couplings, at the conditions asked for."""
     coupling, exclusive = couple(lines.graph, lines.sites)
+    fixed_charge = sum(lines.graph.charge)
+    pk: list[float] = [estimate.value for estimate in estimates]
+    if conditions != STANDARD:
+        moved, coupling = sites_at(
+            np.array(pk),
+            coupling,
+            is_acid=np.array([site.kind == "acid" for site in lines.sites], dtype=bool),
+            families=[site.row.family for site in lines.sites],
+            fixed_charge=fixed_charge,
+            conditions=conditions,
+        )
+        pk = moved.tolist()
     return SiteSet(
         kinds=[site.kind for site in lines.sites],
-        pk=[estimate.value for estimate in estimates],
+        pk=pk,
         half_width=[estimate.half_width for estimate in estimates],
         coupling=coupling,
         exclusive=exclusive,
-        fixed_charge=sum(lines.graph.charge),
+        fixed_charge=fixed_charge,
         law_half_width=model().law_half_width,
     )
 
 
 def predict(
-    structures: Sequence[str | Chem.Mol], *, ph: Sequence[float] = (7.4,), standings: bool = False
+    structures: Sequence[str | Chem.Mol],
+    *,
+    ph: Sequence[float] = (7.4,),
+    conditions: Conditions = STANDARD,
+    standings: bool = False,
 ) -> list[Prediction]:
     """Predict a batch of structures.
 
@@ -182,6 +200,8 @@ def predict(
         SMILES or molecules.
     ph : sequence of float
         pH values at which the state is computed [-].
+    conditions : Conditions
+        Temperature and ionic strength of the constants and states.
     standings : bool
         Whether to keep what the order of a list needs (`kinship`).
 
@@ -200,12 +220,12 @@ def predict(
     ready = [(index, parent, site_lines(parent)) for index, parent in parents]
     corrected = corrections_of([lines for *_, lines in ready])
     estimates = [estimates_of(lines, found) for (*_, lines), found in zip(ready, corrected, strict=True)]
-    sets = [site_set(lines, found) for (*_, lines), found in zip(ready, estimates, strict=True)]
+    sets = [site_set(lines, found, conditions) for (*_, lines), found in zip(ready, estimates, strict=True)]
     for (index, parent, lines), found, kept, sites, equilibrium in zip(
         ready, estimates, corrected, sets, equilibrate(sets, ph), strict=True
     ):
         standing = standing_of(lines, kept, equilibrium) if standings else None
-        predictions[index] = _prediction(parent, lines, found, sites, equilibrium, standing)
+        predictions[index] = _prediction(parent, lines, found, sites, equilibrium, standing, conditions)
     return [predictions[index] for index in range(len(structures))]
 
 
@@ -216,10 +236,13 @@ def _prediction(
     sites_in: SiteSet,
     equilibrium: Equilibrium,
     standing: Standing | None,
+    conditions: Conditions,
 ) -> Prediction:
     sites = [estimate.site for estimate in estimates]
     basic = any(step.kind == "base" and step.value >= LOWEST for step in equilibrium.steps)
     notes = list(parent.notes)
+    if conditions != STANDARD:
+        notes.append(f"at {conditions}")
     if not basic:
         notes.append("no nitrogen takes a proton above pH -5")
     if equilibrium.approximate:
@@ -234,7 +257,7 @@ def _prediction(
         message="; ".join(notes),
         parent=parent,
         estimates=estimates,
-        coupling=np.asarray(sites_in.coupling),
+        sites=sites_in,
         equilibrium=equilibrium,
         forms=forms,
         lines=lines,

@@ -11,7 +11,10 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
+from functools import cache
 from typing import TYPE_CHECKING, Literal
+
+from .request import PLAIN, Request
 
 if TYPE_CHECKING:
     from .equilibrium import Step
@@ -75,12 +78,21 @@ CONSTANT_COLUMNS: tuple[Column, ...] = (
     Column("steps_omitted", "integer"),
 )
 
+PKB_COLUMNS: tuple[Column, ...] = tuple(Column(f"pkb_{n}", "constant") for n in range(1, STEPS_SHOWN + 1))
+"""On request: each stands after the interval of the pKaH of the same number."""
+
 STATE_COLUMNS: tuple[Column, ...] = (
     Column("net_charge", "fraction"),
     Column("protonated_fraction", "fraction"),
     Column("dominant_form", "text"),
     Column("dominant_fraction", "fraction"),
 )
+
+FORM_COLUMNS: tuple[Column, ...] = (
+    Column("neutral_fraction", "fraction"),
+    Column("zwitterion_fraction", "fraction"),
+)
+"""On request: shares of the form without any charge and of that whose charges add up to none."""
 
 
 def clean_ph(ph: float | str | Iterable[float | str]) -> tuple[float, ...]:
@@ -122,7 +134,23 @@ def clean_ph(ph: float | str | Iterable[float | str]) -> tuple[float, ...]:
     return tuple(seen)
 
 
-def schema(ph: Sequence[float] = (7.4,), *, ranked: bool = False) -> tuple[Column, ...]:
+def constant_columns(request: Request = PLAIN) -> tuple[Column, ...]:
+    """Columns of the constants, with pKb beside pKaH where that is asked for."""
+    if not request.pkb:
+        return CONSTANT_COLUMNS
+    after = {f"pkah_{n}_high": column for n, column in enumerate(PKB_COLUMNS, start=1)}
+    pairs = ((column, after.get(column.name)) for column in CONSTANT_COLUMNS)
+    return tuple(column for pair in pairs for column in pair if column is not None)
+
+
+def state_columns(request: Request = PLAIN) -> tuple[Column, ...]:
+    """Columns of the state at one pH."""
+    return STATE_COLUMNS + FORM_COLUMNS if request.forms else STATE_COLUMNS
+
+
+def schema(
+    ph: Sequence[float] = (7.4,), *, ranked: bool = False, request: Request = PLAIN
+) -> tuple[Column, ...]:
     """Columns of the result table.
 
     Parameters
@@ -131,6 +159,8 @@ def schema(ph: Sequence[float] = (7.4,), *, ranked: bool = False) -> tuple[Colum
         pH values [-]. With one the state columns stand as named, with several each is followed by `_at_<pH>`.
     ranked : bool
         Whether the column `rank` comes first, and `above_next` last.
+    request : Request
+        Further columns.
 
     Examples
     --------
@@ -139,13 +169,12 @@ def schema(ph: Sequence[float] = (7.4,), *, ranked: bool = False) -> tuple[Colum
     >>> [column.name for column in schema((5.5, 7.4))][-8::4]
     ['net_charge_at_5.5', 'net_charge_at_7.4']
     """
-    if len(ph) == 1:
-        states = STATE_COLUMNS
-    else:
+    states = state_columns(request)
+    if len(ph) > 1:
         states = tuple(
-            Column(f"{column.name}_at_{value:g}", column.kind) for value in ph for column in STATE_COLUMNS
+            Column(f"{column.name}_at_{value:g}", column.kind) for value in ph for column in states
         )
-    columns = (*CONSTANT_COLUMNS, *states)
+    columns = (*constant_columns(request), *states)
     return (RANK_COLUMN, *columns, ABOVE_COLUMN) if ranked else columns
 
 
@@ -183,9 +212,9 @@ def cells(record: Record, columns: Sequence[Column]) -> list[str]:
     ]
 
 
-def refused_record(reason: str, ph: Sequence[float]) -> Record:
+def refused_record(reason: str, ph: Sequence[float], request: Request = PLAIN) -> Record:
     """The row of a structure that cannot be computed: `refused`, the reason, all else empty."""
-    return ("refused", reason) + (None,) * (len(CONSTANT_COLUMNS) - 2 + len(STATE_COLUMNS) * len(ph))
+    return ("refused", reason) + (None,) * (len(schema(ph, request=request)) - 2)
 
 
 def equivalent_carriers(prediction: Prediction, step: Step) -> list[int]:
@@ -229,8 +258,8 @@ def interval(step: Step) -> tuple[float | None, float | None]:
     return reported(step.value - step.half_width), reported(step.value + step.half_width)
 
 
-def record(prediction: Prediction, ph: Sequence[float]) -> Record:
-    """One row, in the order of `schema(ph)`, numbers rounded as they are shown.
+def record(prediction: Prediction, ph: Sequence[float], request: Request = PLAIN) -> Record:
+    """One row, in the order of `schema(ph, request=request)`, numbers rounded as they are shown.
 
     Parameters
     ----------
@@ -238,6 +267,8 @@ def record(prediction: Prediction, ph: Sequence[float]) -> Record:
         Result for one structure, computed at the same `ph`.
     ph : sequence of float
         pH values [-].
+    request : Request
+        Further columns, and the conditions at which the prediction was made.
 
     Returns
     -------
@@ -247,7 +278,7 @@ def record(prediction: Prediction, ph: Sequence[float]) -> Record:
     """
     parent, equilibrium = prediction.parent, prediction.equilibrium
     if prediction.status == "refused" or parent is None:
-        return refused_record(prediction.message or "cannot be computed", ph)
+        return refused_record(prediction.message or "cannot be computed", ph, request)
     steps = equilibrium.steps if equilibrium is not None else ()
     bases = [step for step in steps if step.kind == "base"]
     acids = [step for step in steps if step.kind == "acid"]
@@ -258,6 +289,8 @@ def record(prediction: Prediction, ph: Sequence[float]) -> Record:
     for n in range(STEPS_SHOWN):
         value = reported(bases[n].value) if n < len(bases) else None
         row += (None, None, None) if value is None else (value, *interval(bases[n]))
+        if request.pkb:
+            row.append(None if value is None else pkb(value, request))
     if bases and reported(bases[0].value) is not None:
         first = prediction.estimates[bases[0].carrier]
         atom = site_atom(prediction, equivalent_carriers(prediction, bases[0])[0])
@@ -268,7 +301,7 @@ def record(prediction: Prediction, ph: Sequence[float]) -> Record:
     beyond = bases[STEPS_SHOWN:] + acids[STEPS_SHOWN:]
     row.append(sum(reported(step.value) is not None for step in beyond))
     if equilibrium is None:
-        row += (None,) * (len(STATE_COLUMNS) * len(ph))
+        row += (None,) * (len(state_columns(request)) * len(ph))
         return tuple(row)
     for state, form in zip(equilibrium.states, prediction.forms, strict=True):
         row += (
@@ -277,7 +310,27 @@ def record(prediction: Prediction, ph: Sequence[float]) -> Record:
             form,
             shown(state.dominant_fraction, "fraction"),
         )
+        if request.forms:
+            row += (shown(state.neutral_fraction, "fraction"), shown(state.zwitterion_fraction, "fraction"))
     return tuple(row)
+
+
+def pkb(pkah: float, request: Request = PLAIN) -> float:
+    """pKb beside a pKaH: pKw of the conditions less pKaH, to two decimals; 14.00 - pKaH at 25 C.
+
+    Examples
+    --------
+    >>> pkb(9.25)
+    4.75
+    """
+    return shown(_pkw(request.conditions.temperature, request.conditions.ionic_strength) - pkah, "constant")
+
+
+@cache
+def _pkw(temperature: float, ionic_strength: float) -> float:
+    from .conditions import pkw
+
+    return float(pkw(temperature, ionic_strength))
 
 
 def ranking(records: Sequence[Record]) -> list[tuple[int | None, int]]:

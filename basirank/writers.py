@@ -14,7 +14,7 @@ from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import TextIO
 
-from .records import CONSTANT_COLUMNS, Column, Record, column_positions
+from .records import Column, Record, column_positions
 
 TABLE_ENDINGS = (".csv", ".tsv")
 STDOUT = "-"
@@ -102,7 +102,6 @@ def shorten(text: str, width: int) -> str:
     return text[:head] + ELLIPSIS + text[len(text) - (width - head - 1) :]
 
 
-_PLACES = column_positions(CONSTANT_COLUMNS)
 _FLEXIBLE = ("compound", "class")
 _LEFT = ("compound", "class", "support")  # set to the left, numbers to the right
 _ALWAYS = ("rank", "compound", "pKaH")
@@ -142,18 +141,22 @@ def ranked_table(
     table: dict[str, list[str]] = {
         "rank": ["" if rank is None else str(rank) for rank in ranks],
         "compound": [_printable(label) for label in labels],
-        "pKaH": [_decimal(row[_PLACES["pkah_1"]], 2) for row in records],
-        "±90%": [_half_width(row) for row in records],
+        "pKaH": [_decimal(row[places["pkah_1"]], 2) for row in records],
+        "±90%": [_half_width(row, places) for row in records],
+        **({"pKb": [_decimal(row[places["pkb_1"]], 2) for row in records]} if "pkb_1" in places else {}),
         "above%": [_decimal(None if share is None else 100 * share, 0) for share in above],
-        "atom": [_plain(row[_PLACES["pkah_1_atom"]]) for row in records],
-        "class": [_plain(row[_PLACES["pkah_1_class"]]) for row in records],
+        "atom": [_plain(row[places["pkah_1_atom"]]) for row in records],
+        "class": [_plain(row[places["pkah_1_class"]]) for row in records],
     }
     for value in ph:
         end = "" if len(ph) == 1 else f"_at_{value:g}"
         table[f"charge {value:g}"] = [_decimal(row[places[f"net_charge{end}"]], 2, "+") for row in records]
         table[f"prot.% {value:g}"] = [_percent(row[places[f"protonated_fraction{end}"]]) for row in records]
-    table["support"] = [_plain(row[_PLACES["pkah_1_support"]]) for row in records]
-    reasons = [_printable(_reason(row)) for row in records]
+        for name, column in (("neutral%", "neutral_fraction"), ("zwitt.%", "zwitterion_fraction")):
+            if column + end in places:
+                table[f"{name} {value:g}"] = [_percent(row[places[column + end]]) for row in records]
+    table["support"] = [_plain(row[places["pkah_1_support"]]) for row in records]
+    reasons = [_printable(_reason(row, places)) for row in records]
     wanted = {name: max(len(name), *map(len, texts), 1) for name, texts in table.items()}
     widths = _fit(wanted, width)
     lines = [
@@ -220,20 +223,20 @@ def _percent(value: object) -> str:
     return _decimal(100 * value if isinstance(value, int | float) else None, 1)
 
 
-def _half_width(row: Record) -> str:
+def _half_width(row: Record, places: dict[str, int]) -> str:
     """Half of the 90 % interval of the first pKaH, from whichever end is reported."""
-    value = row[_PLACES["pkah_1"]]
+    value = row[places["pkah_1"]]
     for end in ("pkah_1_high", "pkah_1_low"):
-        if isinstance(value, float) and isinstance(edge := row[_PLACES[end]], float):
+        if isinstance(value, float) and isinstance(edge := row[places[end]], float):
             return _decimal(abs(edge - value), 2)
     return ""
 
 
-def _reason(row: Record) -> str:
+def _reason(row: Record, places: dict[str, int]) -> str:
     """What to say in place of a class of a row without a first pKaH."""
-    if row[_PLACES["pkah_1_class"]] is not None:
+    if row[places["pkah_1_class"]] is not None:
         return ""
-    status, message = _plain(row[_PLACES["status"]]), _plain(row[_PLACES["message"]])
+    status, message = _plain(row[places["status"]]), _plain(row[places["message"]])
     if status == "refused":
         return f"refused: {message}"
     return "no basic site" if status == "no_basic_site" else message

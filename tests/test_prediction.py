@@ -147,7 +147,7 @@ def test_what_cannot_be_computed_is_refused_with_a_reason_and_nothing_else(text)
     (prediction,) = predict([text])
     assert prediction.status == "refused"
     assert prediction.message
-    assert prediction.parent is prediction.equilibrium is prediction.coupling is None
+    assert prediction.parent is prediction.equilibrium is prediction.sites is None
     assert (prediction.estimates, prediction.forms) == ((), ())
 
 

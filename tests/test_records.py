@@ -81,10 +81,10 @@ def prediction(
         message="",
         parent=Parent(mol=mol, atom_index=atoms, smiles=smiles, output_order=atoms, notes=()),
         estimates=tuple(estimate(*site) for site in sites),
-        coupling=np.zeros((len(sites), len(sites))),
+        sites=None,
         equilibrium=Equilibrium(
             steps=tuple(Step(kind=kind, value=value, half_width=0.6, carrier=n) for kind, value, n in steps),
-            states=(State(7.4, charge, 0.25, dominant, 0.75),),
+            states=(State(7.4, charge, 0.25, dominant, 0.75, 0.7, 0.05),),
             approximate=False,
         ),
         forms=(smiles,),

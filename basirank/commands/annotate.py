@@ -11,6 +11,7 @@ import click
 from ..annotation import CHUNK
 from ..readers import open_table
 from ..records import cells, schema, unclashed
+from ..request import Request
 from ..writers import STDOUT, TableWriter, open_output
 from .shared import (
     Progress,
@@ -19,6 +20,7 @@ from .shared import (
     on_terminal,
     quiet_rdkit,
     records_of_rows,
+    request_options,
     say,
     shared_options,
     summarise,
@@ -27,19 +29,21 @@ from .shared import (
 
 @click.command("annotate")
 @shared_options("Write to FILE (.csv, .tsv) instead of CSV to standard output.")
+@request_options(forms=True, pkb=True)
 def command(
     inputs: tuple[str, ...],
     ph: tuple[str, ...],
     output: str | None,
     smiles_column: str | None,
     stdin_format: str,
+    request: Request,
 ) -> int:
     """Add pKaH and pKa values, the first site and the state at each pH to every row, in order, none lost.
 
     The list is streamed, so its length does not matter. A file appears under its name only when it is whole.
     """
     values = checked(ph, output, inputs)
-    columns = schema(values)
+    columns = schema(values, request=request)
     target = output or STDOUT
     statuses: Counter[str] = Counter()
     with open_table(inputs, smiles_column=smiles_column, stdin_format=stdin_format, warn=say) as table:
@@ -51,7 +55,7 @@ def command(
         with open_output(target) as stream:
             writer = TableWriter(stream, target, heading)
             for batch in chain([first], batches):
-                records = records_of_rows(batch, values)
+                records = records_of_rows(batch, values, request)
                 writer.write(
                     [*row.cells, *cells(record, columns)] for row, record in zip(batch, records, strict=True)
                 )

@@ -14,6 +14,7 @@ from ..annotation import CHUNK
 from ..explanation import CAUTION, INTERVAL_NOTE
 from ..readers import InputError, open_table
 from ..records import Record, cell, cells, ranking, schema, unclashed
+from ..request import STANDARD, Request
 from ..writers import TableWriter, open_output, ranked_table
 from .shared import (
     Progress,
@@ -22,6 +23,7 @@ from .shared import (
     label_place,
     on_terminal,
     quiet_rdkit,
+    request_options,
     say,
     shared_options,
     standings_of_rows,
@@ -37,12 +39,14 @@ TABLE_WIDTH = 160  # of the ranked table where standard output is no terminal
 
 @click.command("rank")
 @shared_options("Write the whole table to FILE (.csv, .tsv), or as CSV to standard output for '-'.")
+@request_options(forms=True, pkb=True)
 def command(
     inputs: tuple[str, ...],
     ph: tuple[str, ...],
     output: str | None,
     smiles_column: str | None,
     stdin_format: str,
+    request: Request,
 ) -> int:
     """Sort a list by its first pKaH, strongest base first.
 
@@ -62,14 +66,14 @@ def command(
         records: list[Record] = []
         standings: list[Standing | None] = []
         for batch in batches_of(rows, CHUNK):
-            for record, standing in standings_of_rows(batch, values):
+            for record, standing in standings_of_rows(batch, values, request):
                 records.append(record)
                 standings.append(standing)
             progress.show(len(records), len(batch) == CHUNK)
         progress.clear()
     order = ranking(records)
     surer = _above_next([standings[n] for _, n in order])
-    columns = schema(values, ranked=True)
+    columns = schema(values, ranked=True, request=request)
     if output is None:
         label = label_place(table)
         click.echo(
@@ -78,11 +82,13 @@ def command(
                 [(rows[n].cells[label] if label is not None else "") or rows[n].structure for _, n in order],
                 [records[n] for _, n in order],
                 surer,
-                schema(values),
+                schema(values, request=request),
                 values,
                 shutil.get_terminal_size().columns if on_terminal(sys.stdout) else TABLE_WIDTH,
             )
         )
+        if request.conditions != STANDARD:
+            click.echo(f"\nAt {request.conditions}.")
         click.echo(f"\n{INTERVAL_NOTE}\n{CAUTION}")
         return 0
     heading = ["rank", *map(str, unclashed(table.columns, columns)), *(column.name for column in columns[1:])]

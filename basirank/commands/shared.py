@@ -7,6 +7,7 @@ import time
 from collections import Counter
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
+from functools import wraps
 from itertools import islice
 from typing import TYPE_CHECKING, Any, TypeVar
 
@@ -14,6 +15,7 @@ import click
 
 from ..readers import FORMATS, InputError, Row, Table
 from ..records import Record, clean_ph, refused_record
+from ..request import PLAIN, Conditions, Request
 from ..writers import STDOUT, check_output
 
 if TYPE_CHECKING:
@@ -51,6 +53,45 @@ def shared_options(output_help: str) -> Callable[[Command], Command]:
     return add
 
 
+def request_options(*, forms: bool = False, pkb: bool = False) -> Callable[[Command], Command]:
+    """Options of the conditions and, where wanted, of further columns; the command gets them as one `request`."""
+    options = [
+        click.option("--temperature", metavar="C", default="25",
+                     help="Temperature of constants and states, 0 to 60 C. [default: 25]"),
+        click.option("--ionic-strength", metavar="I", default="0",
+                     help="Ionic strength in mol/L, 0 to 0.5; constants are then mixed ones. [default: 0]"),
+    ]  # fmt: skip
+    if forms:
+        options.append(
+            click.option("--forms", is_flag=True, help="Add shares of neutral form and zwitterion.")
+        )
+    if pkb:
+        options.append(click.option("--show-pkb", is_flag=True, help="Add pKb beside pKaH."))
+
+    def add(command: Command) -> Command:
+        @wraps(command)
+        def with_request(
+            *args: Any,
+            temperature: str,
+            ionic_strength: str,
+            forms: bool = False,
+            show_pkb: bool = False,
+            **kwargs: Any,
+        ) -> Any:
+            try:
+                conditions = Conditions(temperature, ionic_strength)  # type: ignore[arg-type]
+            except ValueError as error:
+                raise InputError(str(error)) from None
+            return command(*args, request=Request(conditions, forms, show_pkb), **kwargs)
+
+        wrapped: Any = with_request
+        for option in reversed(options):
+            wrapped = option(wrapped)
+        return wrapped  # type: ignore[no-any-return]
+
+    return add
+
+
 def checked(
     ph: Iterable[str], output: str | None, inputs: Sequence[str], endings: Sequence[str] | None = None
 ) -> tuple[float, ...]:
@@ -71,23 +112,28 @@ def quiet_rdkit() -> None:
     RDLogger.DisableLog("rdApp.*")  # type: ignore[attr-defined]
 
 
-def records_of_rows(batch: Sequence[Row], ph: tuple[float, ...]) -> list[Record]:
+def records_of_rows(batch: Sequence[Row], ph: tuple[float, ...], request: Request = PLAIN) -> list[Record]:
     """A record for each row of a batch; a row with a problem is refused."""
     from ..annotation import records_of
 
     with _interrupt_held():
-        computed = iter(records_of([row.structure for row in batch if row.problem is None], ph))
-    return [next(computed) if row.problem is None else refused_record(row.problem, ph) for row in batch]
+        computed = iter(records_of([row.structure for row in batch if row.problem is None], ph, request))
+    return [
+        next(computed) if row.problem is None else refused_record(row.problem, ph, request) for row in batch
+    ]
 
 
-def standings_of_rows(batch: Sequence[Row], ph: tuple[float, ...]) -> list[tuple[Record, Standing | None]]:
+def standings_of_rows(
+    batch: Sequence[Row], ph: tuple[float, ...], request: Request = PLAIN
+) -> list[tuple[Record, Standing | None]]:
     """The same, each with what the order of a list needs to know."""
     from ..annotation import standings_of
 
     with _interrupt_held():
-        computed = iter(standings_of([row.structure for row in batch if row.problem is None], ph))
+        computed = iter(standings_of([row.structure for row in batch if row.problem is None], ph, request))
     return [
-        next(computed) if row.problem is None else (refused_record(row.problem, ph), None) for row in batch
+        next(computed) if row.problem is None else (refused_record(row.problem, ph, request), None)
+        for row in batch
     ]
 
 
