@@ -8,13 +8,12 @@ shows.
 
 from __future__ import annotations
 
-import textwrap
 from collections.abc import Iterable
 from dataclasses import dataclass
-from itertools import zip_longest
 from typing import TYPE_CHECKING, Literal
 
-from .records import clean_ph, equivalent_carriers, interval, reported, shown, site_atom, support
+from .records import clean_ph, equivalent_carriers, interval, pkb, reported, shown, site_atom, support
+from .request import PLAIN, STANDARD, Conditions, Request
 
 if TYPE_CHECKING:
     from rdkit import Chem
@@ -30,9 +29,11 @@ INTERVAL_NOTE = (
     "Intervals (90 %) are calibrated on measured compounds left out in turn;\n"
     "a value is supported where measured neighbours stand behind it, else extrapolated."
 )
-TEXT_WIDTH = 110
-NAME_WIDTH = 56
 LEAST_SHOWN = 0.005  # a W or a term that would show as 0.00 is not listed [pK units]
+WORKED_AT = (2.0, 7.4, 10.0)  # pH of an acid wash, of blood and of an alkaline extraction
+BUFFER_REACH = 1.0  # a buffer is useful this far on either side of its constant [pH units]
+BUFFER_LIMITS = (0.0, 14.0)  # constants outside are not listed as buffers [pH]
+BUFFER_CONCENTRATION = 0.1  # for which the capacity is given [mol/L]
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,7 +50,10 @@ class TermLine:
 
 @dataclass(frozen=True, slots=True)
 class SiteLine:
-    """One site: its number here, atom (input numbering), class, intrinsic constant [-], terms, measured analogues."""
+    """One site: its number here, atom (input numbering), class, intrinsic constant [-], terms, measured analogues.
+
+    `at_conditions` is the intrinsic constant at the temperature and ionic strength asked for, None at 25 C and 0.
+    """
 
     number: int
     kind: Literal["base", "acid"]
@@ -61,13 +65,15 @@ class SiteLine:
     support: str
     terms: tuple[TermLine, ...]
     evidence: tuple[Analogue, ...] = ()
+    at_conditions: float | None = None
 
 
 @dataclass(frozen=True, slots=True)
 class StepLine:
     """One macroscopic step: `pKaH n` or `pKa n`, value and 90 % interval [-], the site that has the proton.
 
-    `value` is None, and so is an end of the interval, where it lies outside -5 to 16 and so is not reported.
+    `value` is None, and so is an end of the interval, where it lies outside -5 to 16 and so is not reported. `pkb`
+    is there when asked for.
     """
 
     name: str
@@ -76,6 +82,36 @@ class StepLine:
     high: float | None
     site: int
     atom: int
+    pkb: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class ProtomerLine:
+    """One protomer: net charge, SMILES, share among the molecules of that charge, whether it is the neutral form."""
+
+    charge: int
+    form: str
+    share: float
+    neutral: bool
+
+
+@dataclass(frozen=True, slots=True)
+class MicroconstantLine:
+    """Constant [-] of a site (its number) beside those other sites that carry a charge (their numbers)."""
+
+    site: int
+    charged: tuple[int, ...]
+    value: float
+
+
+@dataclass(frozen=True, slots=True)
+class BufferLine:
+    """One step as a buffer: its name, useful pH range, capacity of 0.1 mol/L at its middle [mol/L per pH unit]."""
+
+    name: str
+    low: float
+    high: float
+    capacity: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,6 +145,16 @@ class Explanation:
         One for each pH.
     approximate : bool
         Whether there were too many sites for exact populations.
+    protomers : tuple of ProtomerLine
+        Protomers of each net charge, where some charge has more than one.
+    microconstants : tuple of MicroconstantLine
+        Microscopic constants between them.
+    buffers : tuple of BufferLine
+        Steps between pH 0 and 14 as buffers.
+    protonated_at : tuple of (float, float)
+        Share of molecules with a proton on a base site at pH 2, 7.4 and 10.
+    conditions : Conditions
+        Temperature and ionic strength of everything but the sums of the sites, which are at 25 C and 0.
     """
 
     structure: str
@@ -120,12 +166,26 @@ class Explanation:
     steps: tuple[StepLine, ...] = ()
     states: tuple[StateLine, ...] = ()
     approximate: bool = False
+    protomers: tuple[ProtomerLine, ...] = ()
+    microconstants: tuple[MicroconstantLine, ...] = ()
+    buffers: tuple[BufferLine, ...] = ()
+    protonated_at: tuple[tuple[float, float], ...] = ()
+    conditions: Conditions = STANDARD
 
     def __str__(self) -> str:
-        return "\n".join(line.rstrip() for line in _text(self))
+        from .wording import lines_of
+
+        return "\n".join(line.rstrip() for line in lines_of(self))
 
 
-def explain(structure: str | Chem.Mol, *, ph: float | Iterable[float] = 7.4) -> Explanation:
+def explain(
+    structure: str | Chem.Mol,
+    *,
+    ph: float | Iterable[float] = 7.4,
+    temperature: float = 25.0,
+    ionic_strength: float = 0.0,
+    show_pkb: bool = False,
+) -> Explanation:
     """The sites, terms, interactions, constants and states of one compound.
 
     Parameters
@@ -134,6 +194,10 @@ def explain(structure: str | Chem.Mol, *, ph: float | Iterable[float] = 7.4) -> 
         One compound; atoms are numbered from 0 as written in it.
     ph : float or iterable of float
         pH of the states [-], -2 to 16.
+    temperature, ionic_strength : float
+        Of the constants and states [C], 0 to 60, and [mol/L], 0 to 0.5.
+    show_pkb : bool
+        Give pKb beside each pKaH.
 
     Returns
     -------
@@ -143,9 +207,10 @@ def explain(structure: str | Chem.Mol, *, ph: float | Iterable[float] = 7.4) -> 
     Raises
     ------
     ValueError
-        pH outside -2 to 16 or not a number.
+        pH, temperature or ionic strength out of range or not a number.
     """
     values = clean_ph(ph)
+    request = Request(Conditions(temperature, ionic_strength), pkb=show_pkb)
     from rdkit import Chem
 
     from .prediction import predict
@@ -153,11 +218,11 @@ def explain(structure: str | Chem.Mol, *, ph: float | Iterable[float] = 7.4) -> 
     if not isinstance(structure, str | Chem.Mol) or (isinstance(structure, str) and not structure.strip()):
         return Explanation(str(structure), "", "refused", "no structure given")
     written = structure.strip() if isinstance(structure, str) else Chem.MolToSmiles(structure)
-    return explanation_of(written, predict([structure], ph=values)[0], values)
+    return explanation_of(written, predict([structure], ph=values, conditions=request.conditions)[0], request)
 
 
-def explanation_of(structure: str, prediction: Prediction, ph: tuple[float, ...]) -> Explanation:
-    """An `Explanation` from a prediction made at the same pH values."""
+def explanation_of(structure: str, prediction: Prediction, request: Request = PLAIN) -> Explanation:
+    """An `Explanation` from a prediction made at the conditions of the request."""
     parent, equilibrium = prediction.parent, prediction.equilibrium
     if prediction.status == "refused" or parent is None:
         return Explanation(structure, "", "refused", prediction.message or "cannot be computed")
@@ -173,20 +238,27 @@ def explanation_of(structure: str, prediction: Prediction, ph: tuple[float, ...]
             )
             for state, form in zip(equilibrium.states, prediction.forms, strict=True)
         )
+    steps = _step_lines(prediction, request)
+    protomers, microconstants = _protomer_lines(prediction)
     return Explanation(
         structure,
         parent.smiles,
         prediction.status,
         prediction.message,
-        tuple(_site_line(prediction, place) for place in range(len(prediction.estimates))),
+        tuple(_site_line(prediction, place, request) for place in range(len(prediction.estimates))),
         _interactions(prediction),
-        _step_lines(prediction),
+        steps,
         states,
         equilibrium is not None and equilibrium.approximate,
+        protomers,
+        microconstants,
+        _buffer_lines(prediction, steps),
+        _protonated_at(prediction),
+        request.conditions,
     )
 
 
-def _site_line(prediction: Prediction, place: int) -> SiteLine:
+def _site_line(prediction: Prediction, place: int, request: Request) -> SiteLine:
     parent, estimate = prediction.parent, prediction.estimates[place]
     assert parent is not None
     terms = tuple(
@@ -212,6 +284,9 @@ def _site_line(prediction: Prediction, place: int) -> SiteLine:
         support(estimate),
         terms,
         _evidence(prediction, place),
+        None
+        if prediction.sites is None or request.conditions == STANDARD
+        else float(prediction.sites.pk[place]),
     )
 
 
@@ -233,7 +308,7 @@ def _interactions(prediction: Prediction) -> tuple[tuple[int, int, float], ...]:
     return tuple(sorted(felt, key=lambda pair: (-abs(pair[2]), pair[:2])))
 
 
-def _step_lines(prediction: Prediction) -> tuple[StepLine, ...]:
+def _step_lines(prediction: Prediction, request: Request) -> tuple[StepLine, ...]:
     """The macroscopic steps; equivalent sites take their protons in the order of their atoms in the input."""
     lines: list[StepLine] = []
     counts = {"base": 0, "acid": 0}
@@ -246,100 +321,60 @@ def _step_lines(prediction: Prediction) -> tuple[StepLine, ...]:
         value = reported(step.value)
         low, high = interval(step) if value is not None else (None, None)
         name = f"{'pKaH' if step.kind == 'base' else 'pKa'} {counts[step.kind]}"
-        lines.append(StepLine(name, value, low, high, place + 1, site_atom(prediction, place)))
+        beside = pkb(value, request) if request.pkb and step.kind == "base" and value is not None else None
+        lines.append(StepLine(name, value, low, high, place + 1, site_atom(prediction, place), beside))
     return tuple(lines)
 
 
-def _text(told: Explanation) -> list[str]:
-    """The whole as lines of text, no line wider than its SMILES or `TEXT_WIDTH`."""
-    lines = [f"Structure  {told.structure}"]
-    if told.status == "refused":
-        return [*lines, f"Refused    {told.message}"]
-    if told.parent_smiles != told.structure:
-        lines.append(f"Parent     {told.parent_smiles}")
-    if told.message:
-        lines += textwrap.wrap(f"Note       {told.message}", TEXT_WIDTH, subsequent_indent=" " * 11)
-    for site in told.sites:
-        lines += ["", *_site_text(site)]
-    if told.interactions:
-        lines += [
-            "",
-            "Interaction W between sites, pK units (like charges repel by W, unlike ones attract)",
-        ]
-        lines += [f"  site {i} - site {j}  {w:+7.2f}" for i, j, w in told.interactions]
-    lines += _steps_text(told)
-    if told.approximate:
-        lines.append(
-            "  Too many sites to count every microstate: these constants and states are approximate."
+def _protomer_lines(
+    prediction: Prediction,
+) -> tuple[tuple[ProtomerLine, ...], tuple[MicroconstantLine, ...]]:
+    """Protomers and the constants between them; nothing where each charge has one protomer only."""
+    from .forms import form_smiles
+    from .microstates import microconstants, protomers
+
+    if prediction.sites is None or prediction.parent is None:
+        return (), ()
+    found = protomers(prediction.sites)
+    if len(found) == len({one.charge for one in found}):
+        return (), ()
+    parent, sites = prediction.parent, [estimate.site for estimate in prediction.estimates]
+    lines = []
+    for one in found:
+        try:
+            form = form_smiles(parent, sites, one.protons)
+        except ValueError:
+            form = "(cannot be drawn)"
+        lines.append(ProtomerLine(one.charge, form, one.share, one.neutral))
+    between = (
+        MicroconstantLine(one.site + 1, tuple(other + 1 for other in one.charged), one.value)
+        for one in microconstants(prediction.sites, found)
+    )
+    return tuple(lines), tuple(between)
+
+
+def _buffer_lines(prediction: Prediction, steps: tuple[StepLine, ...]) -> tuple[BufferLine, ...]:
+    from .ladder import ladder_of
+
+    if prediction.sites is None:
+        return ()
+    ladder = ladder_of(prediction.sites)
+    return tuple(
+        BufferLine(
+            step.name,
+            shown(step.value - BUFFER_REACH, "constant"),
+            shown(step.value + BUFFER_REACH, "constant"),
+            BUFFER_CONCENTRATION * float(ladder.capacity([step.value])[0]),
         )
-    for state in told.states:
-        lines += [
-            "",
-            f"At pH {state.ph:g}",
-            f"  mean net charge      {state.net_charge:+z.2f}",
-            f"  base protonated      {100 * state.protonated_fraction:.1f} %",
-            f"  dominant form        {state.dominant_form}  ({100 * state.dominant_fraction:.1f} %)",
-        ]
-    return lines
+        for step in steps
+        if step.value is not None and BUFFER_LIMITS[0] <= step.value <= BUFFER_LIMITS[1]
+    )
 
 
-def _site_text(site: SiteLine) -> list[str]:
-    """Heading of a site, its terms with their sources beside them, and their sum."""
-    total = f"intrinsic {'pKaH' if site.kind == 'base' else 'pKa'}, other sites neutral"
-    told = [term for n, term in enumerate(site.terms) if n == 0 or abs(term.value) >= LEAST_SHOWN]
-    names = [_term_name(term) for term in told]
-    width = min(max(map(len, (*names, total))), NAME_WIDTH)
-    lines = [f"Site {site.number}: {site.site_class}, {site.kind}, on {site.symbol} atom {site.atom}"]
-    for name, term in zip(names, told, strict=True):
-        left = textwrap.wrap(name, width)
-        right = textwrap.wrap(term.source, TEXT_WIDTH - width - 13) or [""]
-        for n, (text, source) in enumerate(zip_longest(left, right, fillvalue="")):
-            value = f"{shown(term.value, 'constant'):+7.2f}" if n == 0 else ""
-            lines.append(f"  {text:<{width}}  {value:7}  {source}")
-    if len(told) < len(site.terms):
-        lines.append(f"  ({len(site.terms) - len(told)} more that add nothing)")
-    low, high = site.value - site.half_width, site.value + site.half_width
-    lines.append(f"  {total:<{width}}  {site.value:7.2f}  ({low:.2f} to {high:.2f}, {site.support})")
-    return lines + _evidence_text(site.evidence)
+def _protonated_at(prediction: Prediction) -> tuple[tuple[float, float], ...]:
+    from .equilibrium import equilibrate
 
-
-def _evidence_text(evidence: tuple[Analogue, ...]) -> list[str]:
-    """The measured values behind a correction, each with what it adds and its source."""
-    if not evidence:
-        return []
-    lines = ["  carried most by these measured values, each with its weight and what it adds:"]
-    for one in evidence:
-        constant = "pKaH" if one.kind == "pkah" else "pKa"
-        text = f"    {f'{one.name}, ' if one.name else ''}{one.smiles}: {constant} {one.value:.2f}"
-        text += f"  ({one.weight:.2f}, {one.pull:+.2f})  {one.source}"
-        lines += textwrap.wrap(text, TEXT_WIDTH, subsequent_indent=" " * 6, break_long_words=False)
-    return lines
-
-
-def _term_name(term: TermLine) -> str:
-    """Name of a term with its atoms, and the product behind its value where there is one to show."""
-    name = term.name
-    if term.atoms:
-        name += f" [atom{'s' if len(term.atoms) > 1 else ''} {', '.join(map(str, term.atoms))}]"
-    if term.descriptor != 1.0 and term.coefficient != 1.0:
-        name += f" ({term.coefficient:+.3g} x {term.descriptor:.3g})"
-    return name
-
-
-def _steps_text(told: Explanation) -> list[str]:
-    if not told.steps:
-        return []
-    by_number = {site.number: site for site in told.sites}
-    lines = ["", "Macroscopic constants, in the order of protonation"]
-    for step in told.steps:
-        site = by_number[step.site]
-        if step.value is None:
-            value = "   not within -5 to 16"
-        else:
-            ends = ["..." if end is None else f"{end:.2f}" for end in (step.low, step.high)]
-            value = f"{step.value:6.2f}  ({ends[0]} to {ends[1]})"
-        verb = "goes on" if step.name.startswith("pKaH") else "comes off"
-        lines.append(
-            f"  {step.name:<7} {value:<26}  proton {verb} {site.symbol} atom {step.atom}, {site.site_class}"
-        )
-    return lines
+    if prediction.sites is None or prediction.status != "ok":
+        return ()
+    states = equilibrate([prediction.sites], WORKED_AT)[0].states
+    return tuple((state.ph, shown(state.protonated_fraction, "fraction")) for state in states)

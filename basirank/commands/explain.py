@@ -6,23 +6,27 @@ import click
 
 from ..explanation import CAUTION, INTERVAL_NOTE, explain
 from ..readers import open_table
+from ..request import Request
 from ..writers import STDOUT, open_output
-from .shared import WRONG_INPUT, checked, label_place, quiet_rdkit, say, shared_options
+from .shared import WRONG_INPUT, checked, label_place, quiet_rdkit, request_options, say, shared_options
 
 
 @click.command("explain")
 @shared_options("Write the text to FILE (.txt).")
+@request_options(pkb=True)
 def command(
     inputs: tuple[str, ...],
     ph: tuple[str, ...],
     output: str | None,
     smiles_column: str | None,
     stdin_format: str,
+    request: Request,
 ) -> int:
     """Show the sites of a compound: parent value and increments of each, with their atoms and sources.
 
-    Then come the interaction between sites, the macroscopic constants in the order of protonation, and the
-    state at each pH. Atoms are counted from 0 as written.
+    Then come the interaction between sites, the macroscopic constants in the order of protonation, protomers of
+    the same charge with their shares, the state at each pH, and the compound as a buffer. Atoms are counted from 0
+    as written.
     """
     values = checked(ph, output, inputs, (".txt",))
     code = 0
@@ -32,7 +36,15 @@ def command(
         texts = []
         for row in table.rows:
             name = row.cells[label] if label is not None else ""
-            told = None if row.problem else explain(row.structure, ph=values)
+            told = None
+            if not row.problem:
+                told = explain(
+                    row.structure,
+                    ph=values,
+                    temperature=request.conditions.temperature,
+                    ionic_strength=request.conditions.ionic_strength,
+                    show_pkb=request.pkb,
+                )
             if told is None or told.status == "refused":
                 reason = row.problem if told is None else told.message
                 say(f"{name or row.structure or 'a row'}: refused: {reason}")
