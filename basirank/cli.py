@@ -26,6 +26,7 @@ COMMANDS = {
     "rank": "Sort a list by basicity, strongest base first.",
     "annotate": "Add constants, first site and state to each row, in order.",
     "explain": "Show why a compound has its pKaH, term by term.",
+    "curve": "Forms, charge and log D against pH, as a table or a picture.",
 }
 """Each command with its line in the help; its module in `basirank.commands` has the same name."""
 

@@ -12,7 +12,7 @@ import sys
 from collections.abc import Iterable, Iterator, Sequence
 from contextlib import contextmanager, suppress
 from pathlib import Path
-from typing import TextIO
+from typing import BinaryIO, TextIO
 
 from .records import Column, Record, column_positions
 
@@ -61,11 +61,27 @@ def open_output(output: str) -> Iterator[TextIO]:
         yield sys.stdout
         sys.stdout.flush()
         return
+    with (
+        _beside(output) as partial,
+        open(partial, "w", encoding="utf-8", errors="replace", newline="") as stream,
+    ):
+        yield stream
+
+
+@contextmanager
+def open_bytes(output: str) -> Iterator[BinaryIO]:
+    """A stream of bytes to a file that takes its name when whole."""
+    with _beside(output) as partial, open(partial, "wb") as stream:
+        yield stream
+
+
+@contextmanager
+def _beside(output: str) -> Iterator[Path]:
+    """A path to write to, which takes the name of the output at the end, or is gone if something fails."""
     final = Path(os.path.realpath(output))
     partial = final.with_name(f".{final.name}.{os.getpid()}.part")
     try:
-        with open(partial, "w", encoding="utf-8", errors="replace", newline="") as stream:
-            yield stream
+        yield partial
         os.replace(partial, final)
     except BaseException:
         with suppress(OSError):

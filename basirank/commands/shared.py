@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import os
 import signal
 import time
 from collections import Counter
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
+from dataclasses import dataclass
 from functools import wraps
 from itertools import islice
 from typing import TYPE_CHECKING, Any, TypeVar
@@ -16,12 +18,13 @@ import click
 from ..readers import FORMATS, InputError, Row, Table
 from ..records import Record, clean_ph, refused_record
 from ..request import PLAIN, Conditions, Request
-from ..writers import STDOUT, check_output
+from ..writers import STDOUT, TABLE_ENDINGS, check_output, open_bytes, open_output
 
 if TYPE_CHECKING:
     from ..kinship import Standing
 
 WRONG_INPUT = 2
+PICTURE_ENDINGS = (".svg", ".png")
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 
@@ -33,11 +36,20 @@ def say(message: str) -> None:
 
 
 def shared_options(output_help: str) -> Callable[[Command], Command]:
+    """The arguments and options of the commands that tell the state at a pH."""
+    ph = click.option("--ph", "ph", multiple=True, default=("7.4",), metavar="PH",
+                      help="pH of the charge and form columns, -2 to 16; may be repeated. [default: 7.4]")  # fmt: skip
+
+    def add(command: Command) -> Command:
+        return input_options(output_help)(ph(command))
+
+    return add
+
+
+def input_options(output_help: str) -> Callable[[Command], Command]:
     """The arguments and options that all commands have."""
     options = [
         click.argument("inputs", nargs=-1, metavar="INPUT..."),
-        click.option("--ph", "ph", multiple=True, default=("7.4",), metavar="PH",
-                     help="pH of the charge and form columns, -2 to 16; may be repeated. [default: 7.4]"),
         click.option("-o", "--output", metavar="FILE", help=output_help),
         click.option("--smiles-column", metavar="NAME",
                      help="Column of a table that holds the SMILES. [default: smiles, in any letter case]"),
@@ -103,6 +115,36 @@ def checked(
     if output is not None:
         check_output(output, inputs, *(() if endings is None else (endings,)))
     return values
+
+
+@dataclass(frozen=True, slots=True)
+class Picture:
+    """How a picture is written: as the SVG itself, or drawn as a PNG."""
+
+    as_png: bool
+
+    def write(self, output: str, document: str) -> None:
+        """Write an SVG document to a file that takes its name when whole."""
+        from ..plots import png
+
+        if self.as_png:
+            data = png(document)
+            with open_bytes(output) as stream:
+                stream.write(data)
+        else:
+            with open_output(output) as stream:
+                stream.write(document)
+
+
+def check_picture(output: str, inputs: Sequence[str]) -> Picture | None:
+    """The picture that an output's ending asks for, None for a table; checked before any work is done."""
+    check_output(output, inputs, (*TABLE_ENDINGS, *PICTURE_ENDINGS))
+    ending = os.path.splitext(output)[1].lower()
+    if ending == ".png":
+        from ..plots import png_ready
+
+        png_ready()
+    return Picture(ending == ".png") if ending in PICTURE_ENDINGS else None
 
 
 def quiet_rdkit() -> None:

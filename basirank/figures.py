@@ -1,0 +1,121 @@
+"""Pictures of curves and titrations: which quantity stands in which panel, under which name."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from .plots import Line, Mark, Panel, svg
+
+if TYPE_CHECKING:
+    from .curves import Curve
+
+MOST_COMPOUNDS = 6  # of one picture: past that neither colours nor labels stay apart
+FORM_SHOWN = 0.01  # least share, somewhere, of a form that has a curve
+DRAWN = 0.0003  # share below which a form has no curve: it would lie on the axis
+NAME_LENGTH = 40
+MINUS = "\N{MINUS SIGN}"
+QUANTITIES = ("forms", "charge", "logd")
+
+
+def curve_figure(curves: Sequence[Curve], shown: Sequence[str] = QUANTITIES, note: str = "") -> str:
+    """Curves as an SVG: shares of the forms of each compound, then mean charge and log D of all.
+
+    Parameters
+    ----------
+    curves : sequence of Curve
+        One to six.
+    shown : sequence of {"forms", "charge", "logd"}
+        Which quantities.
+    note : str
+        Conditions, beside the name of the axis.
+
+    Raises
+    ------
+    ValueError
+        None, or more than six.
+    """
+    if not 0 < len(curves) <= MOST_COMPOUNDS:
+        raise ValueError(f"a picture holds 1 to {MOST_COMPOUNDS} compounds, not {len(curves)}")
+    ph = curves[0].ph
+    names = [_short(curve.name or curve.structure) for curve in curves]
+    alone = len(curves) == 1
+    panels = []
+    if "forms" in shown:
+        panels += [
+            Panel("" if alone else name, "share / %", _form_lines(curve), (0.0, 100.0), _marks(curve),
+                  320.0 if alone else 200.0)
+            for name, curve in zip(names, curves, strict=True)
+        ]  # fmt: skip
+    if "charge" in shown:
+        lines = [
+            _line(name, curve, curve.net_charge, n, alone) for n, (name, curve) in _numbered(names, curves)
+        ]
+        marks = _marks(curves[0]) if alone and not panels else ()
+        panels.append(Panel("", "net charge", lines, _whole(lines, 0.0), marks, 190.0 if alone else 260.0))
+    if "logd" in shown:
+        lines = [
+            _line(name, curve, curve.log_d, n, alone)
+            for n, (name, curve) in _numbered(names, curves)
+            if curve.log_d is not None and np.isfinite(curve.log_d).any()
+        ]
+        if lines:
+            panels.append(Panel("", "log D", lines, _whole(lines), (), 190.0 if alone else 260.0))
+    if not panels:
+        raise ValueError(
+            "log D needs log P, and a compound with a fixed charge has none: give it with --logp"
+        )
+    label = "pH" + (f"  ({note})" if note else "")
+    return svg(panels, x_label=label, x_range=(float(ph[0]), float(ph[-1])), title=names[0] if alone else "")
+
+
+def charge_name(charge: int) -> str:
+    """Name of the forms of one net charge.
+
+    Examples
+    --------
+    >>> charge_name(1), charge_name(-2)
+    ('charge +1', 'charge −2')
+    """
+    return f"charge {charge:+d}".replace("-", MINUS)
+
+
+def _numbered(names: Sequence[str], curves: Sequence[Curve]) -> list[tuple[int, tuple[str, Curve]]]:
+    return list(enumerate(zip(names, curves, strict=True)))
+
+
+def _short(name: str) -> str:
+    return name if len(name) <= NAME_LENGTH else name[: NAME_LENGTH - 1] + "…"
+
+
+def _line(name: str, curve: Curve, y: object, n: int, alone: bool) -> Line:
+    return Line("" if alone else name, curve.ph, np.asarray(y, dtype=np.float64), n)
+
+
+def _form_lines(curve: Curve) -> list[Line]:
+    """A curve for each net charge; without any net charge one for the neutral form and one for the zwitterion."""
+    forms = []
+    for place, charge in enumerate(curve.charges):
+        if charge:
+            forms.append((charge_name(charge), curve.shares[:, place]))
+        else:
+            forms += [("neutral form", curve.neutral), ("zwitterion", curve.zwitterion)]
+    seen = [(name, share) for name, share in forms if share.max() >= FORM_SHOWN]
+    return [
+        Line(name, curve.ph, np.where(share < DRAWN, np.nan, 100.0 * share), n)
+        for n, (name, share) in enumerate(seen)
+    ]
+
+
+def _marks(curve: Curve) -> list[Mark]:
+    return [Mark(value, f"{name} {value:.2f}".replace("-", MINUS)) for name, value in curve.constants]
+
+
+def _whole(lines: Sequence[Line], *also: float) -> tuple[float, float]:
+    """Whole numbers around all values, at least one unit apart."""
+    values = np.concatenate([np.asarray(also, dtype=np.float64), *(line.y for line in lines)])
+    values = values[np.isfinite(values)]
+    low, high = float(np.floor(values.min() + 1e-6)), float(np.ceil(values.max() - 1e-6))
+    return low, max(high, low + 1.0)
