@@ -1,7 +1,7 @@
 """Ranked, explained pKaH values with intervals, site by site, and the protonation state at a pH.
 
-`annotate`, `annotate_frame`, `rank` and `explain` are loaded when first used, so that importing the package
-stays cheap.
+`annotate`, `annotate_frame`, `rank`, `explain`, `curve` and `titrate` are loaded when first used, so that importing the
+package stays cheap.
 """
 
 from __future__ import annotations
@@ -11,18 +11,33 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from .annotation import annotate, annotate_frame, rank
+    from .curves import curve
     from .explanation import Explanation, explain
+    from .titration import Titration, titrate
 
 __version__ = "0.1.0"
 
-__all__ = ["Explanation", "__version__", "annotate", "annotate_frame", "explain", "rank"]
+__all__ = [
+    "Explanation",
+    "Titration",
+    "__version__",
+    "annotate",
+    "annotate_frame",
+    "curve",
+    "explain",
+    "rank",
+    "titrate",
+]
 
 _HOMES = {
     "annotate": "annotation",
     "annotate_frame": "annotation",
     "rank": "annotation",
+    "curve": "curves",
     "explain": "explanation",
     "Explanation": "explanation",
+    "titrate": "titration",
+    "Titration": "titration",
 }
 
 

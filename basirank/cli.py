@@ -27,6 +27,7 @@ COMMANDS = {
     "annotate": "Add constants, first site and state to each row, in order.",
     "explain": "Show why a compound has its pKaH, term by term.",
     "curve": "Forms, charge and log D against pH, as a table or a picture.",
+    "titrate": "Titration curve of a compound or its salt, with equivalence points.",
 }
 """Each command with its line in the help; its module in `basirank.commands` has the same name."""
 

@@ -11,6 +11,7 @@ from .plots import Line, Mark, Panel, svg
 
 if TYPE_CHECKING:
     from .curves import Curve
+    from .titration import Titration
 
 MOST_COMPOUNDS = 6  # of one picture: past that neither colours nor labels stay apart
 FORM_SHOWN = 0.01  # least share, somewhere, of a form that has a curve
@@ -69,6 +70,30 @@ def curve_figure(curves: Sequence[Curve], shown: Sequence[str] = QUANTITIES, not
         )
     label = "pH" + (f"  ({note})" if note else "")
     return svg(panels, x_label=label, x_range=(float(ph[0]), float(ph[-1])), title=names[0] if alone else "")
+
+
+def titration_figure(done: Titration, name: str, note: str = "") -> str:
+    """A titration curve as an SVG, its visible equivalence points marked.
+
+    Parameters
+    ----------
+    done : Titration
+    name : str
+        Of the compound.
+    note : str
+        Of the titrant and the conditions, beside the name of the axis.
+    """
+    low, high = _whole([Line("", done.volume, done.ph, 0)])
+    marks = [
+        Mark(point.volume, f"{point.volume:.2f} mL, pH {point.ph:.2f}", point.ph)
+        for point in done.equivalences
+        if point.visible
+    ]
+    panel = Panel(
+        "", "pH", [Line("", done.volume, done.ph, 0)], (min(low, 2.0), max(high, 12.0)), marks, 420.0
+    )
+    label = "volume of titrant / mL" + (f"  ({note})" if note else "")
+    return svg([panel], x_label=label, x_range=(0.0, float(done.volume[-1])), title=_short(name))
 
 
 def charge_name(charge: int) -> str:

@@ -144,6 +144,21 @@ def is_organic(mol: Chem.Mol) -> bool:
     return mol.HasSubstructMatch(_organic_pattern())
 
 
+def components_of(mol: Chem.Mol, index: Sequence[int]) -> list[Component]:
+    """Every component of a salt or solvate.
+
+    Parameters
+    ----------
+    mol : Mol
+        Sanitised molecule of one or more components.
+    index : sequence of int
+        Input number of each atom.
+    """
+    maps: list[list[int]] = []
+    parts = Chem.GetMolFrags(mol, asMols=True, fragsMolAtomMapping=maps)
+    return [_component(part, [index[i] for i in atoms]) for part, atoms in zip(parts, maps, strict=True)]
+
+
 def choose_component(
     mol: Chem.Mol, index: Sequence[int]
 ) -> tuple[Chem.Mol, list[int], tuple[str, ...]] | None:
@@ -162,11 +177,7 @@ def choose_component(
         Neutral component, its input numbers, remarks on other compounds left out; None where nothing is
         organic.
     """
-    maps: list[list[int]] = []
-    parts = Chem.GetMolFrags(mol, asMols=True, fragsMolAtomMapping=maps)
-    components = [
-        _component(part, [index[i] for i in atoms]) for part, atoms in zip(parts, maps, strict=True)
-    ]
+    components = components_of(mol, index)
     organic = [component for component in components if component.is_organic]
     if not organic:
         return None
