@@ -225,6 +225,7 @@ def rank(
     request = Request(Conditions(temperature, ionic_strength), forms, show_pkb)
     columns = schema(values, ranked=True, request=request)
     frame = structures if isinstance(structures, pd.DataFrame) else None
+    index: pd.Index | None
     if frame is not None:
         items, index = _structures_of(frame, smiles_column), frame.index
     else:
