@@ -70,13 +70,13 @@ def _inorganic() -> dict[str, tuple[str, tuple[float, ...]]]:
     return found
 
 
-def compose(structure: str, conditions: Conditions = STANDARD) -> Composition:
+def compose(structure: str | Chem.Mol, conditions: Conditions = STANDARD) -> Composition:
     """Everything that one formula unit of a structure brings into solution.
 
     Parameters
     ----------
-    structure : str
-        SMILES, salts included; a name after white space is ignored.
+    structure : str or rdkit.Chem.Mol
+        Salts included; a name after the white space of a SMILES is ignored.
     conditions : Conditions
         Of the constants; those of acids without carbon keep their value of 25 C.
 
@@ -96,7 +96,8 @@ def compose(structure: str, conditions: Conditions = STANDARD) -> Composition:
     (1, 0, 0)
     """
     parent = read_parent(structure)
-    mol = split_ion_pairs(Chem.MolFromSmiles(structure.split()[0]))
+    text = structure if isinstance(structure, str) else Chem.MolToSmiles(structure)
+    mol = split_ion_pairs(Chem.MolFromSmiles(text.split()[0]))
     solutes: list[Ladder] = []
     notes: list[str] = []
     fixed = 0
@@ -112,14 +113,14 @@ def compose(structure: str, conditions: Conditions = STANDARD) -> Composition:
                 fixed += drawn
             else:
                 solutes.append(solute)
-            if parent.atom_index[0] not in component.index:
+            if name != parent.smiles:
                 notes.append(f"with {name}")
     net = Chem.GetFormalCharge(mol)
     if net:
         ion = "chloride" if net > 0 else "sodium"
         notes.append(f"drawn with charge {net:+d} and no counter-ion: {abs(net)} {ion} added")
         fixed -= net
-    return Composition(tuple(solutes), fixed, tuple(notes))
+    return Composition(tuple(solutes), fixed, tuple(dict.fromkeys(notes)))
 
 
 def _solute(component: Component, conditions: Conditions) -> tuple[Ladder | None, str]:
@@ -128,7 +129,7 @@ def _solute(component: Component, conditions: Conditions) -> tuple[Ladder | None
         (found,) = predict([Chem.MolToSmiles(component.mol)], ph=(7.0,), conditions=conditions)
         if found.sites is None:
             raise Refusal(found.message)
-        return ladder_of(found.sites), f"{component.key} (constants predicted)"
+        return ladder_of(found.sites), "" if found.parent is None else found.parent.smiles
     if component.key in _inorganic():
         name, constants = _inorganic()[component.key]
         taken_up = np.array(constants[::-1])

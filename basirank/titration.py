@@ -11,7 +11,7 @@ whose left side falls as pH rises, so that there is one answer. Temperature and 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -20,6 +20,9 @@ from .composition import STRONG, Composition, compose
 from .conditions import davies, pkw
 from .ladder import Ladder
 from .request import STANDARD, Conditions, within
+
+if TYPE_CHECKING:
+    from rdkit import Chem
 
 Floats = NDArray[np.float64]
 
@@ -32,6 +35,8 @@ HALVINGS = 60  # of the pH interval
 CONCENTRATION_RANGE = (1e-6, 10.0)  # mol/L
 VOLUME_RANGE = (1e-3, 1e6)  # mL
 POINTS_RANGE = (10, 5000)
+CLOSE = (0.0, 0.0005, 0.001, 0.002, 0.004, 0.007, 0.012, 0.02)
+"""Where the curve has further points on either side of an equivalence point, as parts of its volume [-]."""
 SPREAD = 1.5  # the curve goes on to this multiple of the last equivalence volume
 TITRATABLE = (-1.0, 15.0)  # steps with constants outside have no equivalence point in water [-]
 NEUTRAL = 7.0  # a titrant's sites beyond it, pKa below or pKaH above, count as its equivalents [-]
@@ -65,7 +70,7 @@ class Titration:
     Attributes
     ----------
     volume, ph : ndarray, shape (h,)
-        Volume of titrant [mL] and pH; the equivalence points are among them.
+        Volume of titrant [mL] and pH; the equivalence points are among them, and more points around each.
     equivalences : tuple of Equivalence
         By volume.
     titrant : str
@@ -166,7 +171,7 @@ def titration(
     last_volume : float, optional
         Where the curve ends [mL]; half as much again as the last equivalence point when not given.
     points : int
-        Volumes of the curve, equally spaced; the equivalence points come to them.
+        Volumes of the curve, equally spaced; each equivalence point and some around it come to them.
     conditions : Conditions
 
     Returns
@@ -206,7 +211,8 @@ def titration(
     seen = [point.volume for point in found if point.visible] or [point.volume for point in found]
     end = last_volume if last_volume is not None else SPREAD * max(seen, default=one)
     found = tuple(point for point in found if point.volume <= end)
-    volumes = np.union1d(np.linspace(0.0, end, points), [point.volume for point in found])
+    around = [point.volume * (1.0 + side * part) for point in found for part in CLOSE for side in (-1, 1)]
+    volumes = np.union1d(np.linspace(0.0, end, points), [added for added in around if added <= end])
     return Titration(volumes, ph_at(volumes), found, kind, conditions, analyte.notes)
 
 
@@ -236,7 +242,7 @@ def _equivalence(ph_at: Any, volume: float, one: float) -> Equivalence:
 
 
 def titrate(
-    structure: str,
+    structure: str | Chem.Mol,
     *,
     concentration: float = 0.1,
     volume: float = 25.0,
@@ -251,8 +257,8 @@ def titrate(
 
     Parameters
     ----------
-    structure : str
-        SMILES of the compound or its salt.
+    structure : str or rdkit.Chem.Mol
+        The compound or its salt.
     concentration, volume : float
         Of its solution [mol/L of formula units as drawn, mL].
     titrant : str, optional

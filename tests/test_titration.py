@@ -163,6 +163,7 @@ def test_a_hydrochloride_brings_chloride_and_says_so(run):
     assert (salt.titrant, base.titrant) == ("base", "acid")
     assert salt.ph[0] < 7 < base.ph[0]
     assert base.equivalences[0].ph == pytest.approx(salt.ph[0], abs=0.2)  # diluted once
+    assert salt.notes == ("with hydrogen chloride",) and base.notes == ()
     assert "hydrogen chloride" in run("titrate", "CCN.Cl").stderr
     assert "chloride added" in run("titrate", "CC[NH3+]").stderr
 
@@ -171,6 +172,7 @@ def test_a_tartrate_brings_its_acid_groups():
     """Ethylammonium hydrogen tartrate has one proton to give near pH 4."""
     done = basirank.titrate("CCN.OC(C(O)C(=O)O)C(=O)O")
     assert done.titrant == "base" and 2.5 < done.ph[0] < 4.5
+    assert done.notes == ("with O=C(O)C(O)C(O)C(=O)O",)
     assert done.equivalences[0].visible and 6.5 < done.equivalences[0].ph < 9
 
 

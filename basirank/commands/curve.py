@@ -13,6 +13,7 @@ from ..writers import STDOUT, TableWriter, open_output
 from .shared import WRONG_INPUT, check_picture, input_options, label_place, quiet_rdkit, request_options, say
 
 MOST_ROWS = 10_000  # compounds of one table
+TABLE_STEP, PICTURE_STEP = 0.1, 0.02  # pH
 
 
 @click.command("curve")
@@ -22,7 +23,7 @@ MOST_ROWS = 10_000  # compounds of one table
 @request_options()
 @click.option("--from", "low", metavar="PH", default="0", help="First pH, -2 to 16. [default: 0]")
 @click.option("--to", "high", metavar="PH", default="14", help="Last pH. [default: 14]")
-@click.option("--step", metavar="PH", default="0.1", help="Step of the pH. [default: 0.1]")
+@click.option("--step", metavar="PH", help="Step of the pH. [default: 0.1, finer in a picture]")
 @click.option("--logp", metavar="P", help="log P of the neutral form of one compound. [default: estimated]")
 @click.option("--show", type=click.Choice(("forms", "charge", "logd")), multiple=True,
               help="What a picture shows; may be repeated. [default: all]")  # fmt: skip
@@ -34,7 +35,7 @@ def command(
     request: Request,
     low: str,
     high: str,
-    step: str,
+    step: str | None,
     logp: str | None,
     show: tuple[str, ...],
 ) -> int:
@@ -54,7 +55,7 @@ def command(
         most = MOST_COMPOUNDS if picture else MOST_ROWS
         rows = list(islice(table.rows, most + 1))
         try:
-            ph = ph_grid(low, high, step)  # type: ignore[arg-type]
+            ph = ph_grid(low, high, step or (PICTURE_STEP if picture else TABLE_STEP))  # type: ignore[arg-type]
             log_p = None if logp is None else within("log P", logp, LOG_P_RANGE, "")
         except ValueError as error:
             raise InputError(str(error)) from None
@@ -100,7 +101,7 @@ def command(
             )  # fmt: skip
     if note:
         say(f"at {note}")
-    if any(found.estimated for found in sound):
+    if any(found.estimated for found in sound) and (not picture or "logd" in (show or QUANTITIES)):
         say(
             "log P is an estimate from atom contributions (Wildman and Crippen 1999); --logp gives a measured one"
         )
