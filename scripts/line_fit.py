@@ -171,7 +171,14 @@ class Fit:
             + [("parallel", 0), ("acid share", 0), ("hydrogen bond", 0)]
         )
         law_start = np.log(
-            [*rule.saturated, *rule.conjugated, *rule.ring, rule.parallel_paths, rule.acid_share, rule.hydrogen_bond]
+            [
+                *rule.saturated,
+                *rule.conjugated,
+                *rule.ring,
+                rule.parallel_paths,
+                rule.acid_share,
+                rule.hydrogen_bond,
+            ]
         )
         self.lines = len(self.names)
         self.mean = np.concatenate([[prior[key][0] for key in self.names], law_start])

@@ -36,7 +36,7 @@ SCALE = {
     "nh_acid": 1.10,
 }
 """Variance of the corrections by group, as a share of the kernel's: what the lines of the group miss."""
-KERNEL = Kernel(same_class=1.0, same_family=0.6, same_group=0.4, fade=0.8, value_share=0.4, value_width=1.5)
+KERNEL = Kernel(same_class=0.85, same_family=1.2, same_group=0.8, fade=0.9, value_share=0.3, value_width=2.2)
 """Hyperparameters, chosen in cross-validation grouped by compound among a few dozen settings."""
 NOISE = 0.20
 """Scatter of single compounds that no neighbour explains [pK units]."""
