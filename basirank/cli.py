@@ -38,6 +38,8 @@ Examples:
   basirank rank CCN c1ccncc1 --ph 7.4 --ph 5.5
   basirank annotate library.csv -o annotated.csv
   basirank explain "OC(=O)CN"
+  basirank curve "OC(=O)CN glycine" -o glycine.svg
+  basirank titrate "CCN.Cl" --concentration 0.05
 """
 
 

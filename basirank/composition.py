@@ -135,6 +135,8 @@ def _solute(component: Component, conditions: Conditions) -> tuple[Ladder | None
         taken_up = np.array(constants[::-1])
         charges = np.arange(1 - len(constants), 1)  # of the form with the 1st, 2nd, ... proton
         shift = ionic_strength_shift(charges, conditions.ionic_strength, temperature=conditions.temperature)
+        if conditions.temperature != STANDARD.temperature and max(constants) > STRONG:
+            name += " (its constants as at 25 C)"
         return Ladder(taken_up + shift, -len(constants)), name
     if any(atom.GetTotalNumHs() for atom in component.mol.GetAtoms()):
         raise Refusal(f"no constants are listed for the counter-ion {component.key}")

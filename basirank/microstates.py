@@ -52,8 +52,8 @@ def protomers(sites: SiteSet) -> tuple[Protomer, ...]:
 
     Examples
     --------
-    Cysteine from microscopic constants (thiol 8.53 and ammonium 8.86 first, W = 1.5 or so): of the molecules with
-    charge -1 two thirds have lost the proton of the thiol.
+    A thiol of 8.53 beside an ammonium of 8.86, as in cysteine: of the molecules that have lost one proton of the two
+    two thirds have lost that of the thiol.
 
     >>> cysteine = SiteSet(("base", "acid"), (8.86, 8.53), (0.5, 0.5), np.zeros((2, 2)))
     >>> [(one.protons, round(one.share, 2)) for one in protomers(cysteine) if one.charge == 0]

@@ -176,6 +176,13 @@ def test_a_tartrate_brings_its_acid_groups():
     assert done.equivalences[0].visible and 6.5 < done.equivalences[0].ph < 9
 
 
+def test_constants_of_a_phosphate_are_said_to_be_those_of_25_degrees():
+    assert compose("CCN.OP(=O)(O)O", Conditions(37.0)).notes == (
+        "with phosphoric acid (its constants as at 25 C)",
+    )
+    assert compose("CCN.Cl", Conditions(37.0)).notes == ("with hydrogen chloride",)
+
+
 def test_a_counter_ion_without_constants_is_refused():
     with pytest.raises(Refusal, match="no constants are listed for the counter-ion"):
         compose("CCN.O[Si](O)(O)O")
