@@ -17,6 +17,7 @@ import click
 
 from . import __version__
 from .commands.shared import WRONG_INPUT, say
+from .extras import MissingExtra
 from .readers import InputError
 from .writers import OutputError
 
@@ -93,7 +94,7 @@ class OneLineErrors(click.Group):
         except KeyboardInterrupt:
             say("interrupted")
             return INTERRUPTED
-        except (InputError, OutputError) as error:
+        except (InputError, OutputError, MissingExtra) as error:
             say(str(error))
             return WRONG_INPUT
         except OSError as error:
@@ -127,9 +128,9 @@ def _forget_stdout() -> None:
 def commands(ctx: click.Context) -> None:
     """Rank, annotate and explain the basicity (pKaH) of organic compounds, site by site.
 
-    INPUT is a file (.smi .csv .tsv, each also .gz), '-' for standard input, or SMILES. A line of a .smi file
-    is a SMILES, white space, a name. Tables keep their own columns; a row that cannot be computed is kept as
-    'refused'.
+    INPUT is a file (.smi .csv .tsv .sdf, each also .gz or .zst, or .parquet), a folder of Parquet files, a
+    quoted pattern of file names, '-' for standard input, or SMILES. A line of a .smi file is a SMILES, white
+    space, a name. Tables keep their own columns; a row that cannot be computed is kept as 'refused'.
     """
     if ctx.invoked_subcommand is None:
         click.echo(ctx.get_help())

@@ -39,7 +39,7 @@ def check_output(output: str, inputs: Sequence[str] = (), endings: Sequence[str]
     path = Path(output)
     if path.is_dir():
         raise OutputError(f"{output} is a folder; name a file in it")
-    if path.suffix.lower() not in endings:
+    if not path.name.lower().endswith(tuple(endings)):
         raise OutputError(f"{output}: unknown ending for an output; known are {' '.join(endings)}")
     if not path.parent.is_dir():
         raise OutputError(f"the output folder does not exist: {path.parent}")

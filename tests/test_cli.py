@@ -48,8 +48,8 @@ def test_annotate_keeps_rows_and_order(run, folder):
     assert [row["status"] for row in rows] == ["ok", "ok", "no_basic_site", "refused", "ok"]
     assert rows[3]["message"] and not rows[3]["parent_smiles"]
     assert {name: rows[1][name] for name in NAMES} == {name: rows[4][name] for name in NAMES}
-    assert result.stderr.count("\n") == 1
-    assert "5 rows: 3 ok, 1 without a basic site, 1 refused; 1 blank lines skipped" in result.stderr
+    assert result.stderr.count("\n") == 2 and "refused 1 row: cannot be read as SMILES" in result.stderr
+    assert "5 rows: 3 ok, 1 without a basic site, 1 refused; 1 blank line skipped" in result.stderr
 
 
 def test_annotate_without_a_file_writes_csv_to_standard_output(run):
@@ -296,12 +296,16 @@ def test_more_rows_than_a_chunk_stay_in_order(run, folder):
         (["empty.tsv"], "empty"),
         (["other.csv"], "its columns are: id, structure, note"),
         (["good.csv", "--smiles-column", "mol"], "its columns are: smiles, id"),
-        (["twice.csv"], "2 columns are named"),
+        (["twice.csv"], "twice.csv: 2 columns are named"),
         (["utf16.csv"], "UTF-16"),
         (["broken.smi.gz"], "broken gzip"),
         (["short.smi.gz"], "broken gzip"),
         (["CCN", "--unknown"], "--unknown"),
-        (["-", "--format", "sdf"], "sdf"),
+        (["-", "--format", "xls"], "xls"),
+        (["-", "--format", "parquet"], "standard input"),
+        (["missing"], "missing: no such file, and not a SMILES"),
+        (["CCN", "ethylamine"], "ethylamine: no such file, and not a SMILES"),
+        (["parts/*.csv"], "no such file: parts/*.csv"),
         (["CCN", "--smiles-column", "x"], "--smiles-column"),
         (["good.smi", "--smiles-column", "x"], "--smiles-column"),
     ],
@@ -379,15 +383,20 @@ def test_an_argument_made_of_smiles_symbols_is_a_smiles(run, folder, smiles):
 
 
 def test_a_smiles_that_cannot_be_parsed_is_a_refused_row(run):
-    result = run("annotate", "CCN", "C1CC", "ethylamine", "CC(")
+    result = run("annotate", "CCN", "C1CC", "CC(")
     assert result.exit_code == 0
-    assert [row["status"] for row in table(result.stdout)] == ["ok", "refused", "refused", "refused"]
+    assert [row["status"] for row in table(result.stdout)] == ["ok", "refused", "refused"]
+
+
+def test_an_empty_argument_is_a_refused_row(run):
+    rows = table(run("annotate", "CCN", "", " ", "CN").stdout)
+    assert [row["status"] for row in rows] == ["ok", "refused", "refused", "ok"]
 
 
 # runs that fail or are stopped
 
 
-def test_a_run_that_fails_leaves_nothing_and_the_old_file(run, folder, monkeypatch):
+def test_a_run_that_fails_leaves_the_old_file_and_what_the_next_one_needs(run, folder, monkeypatch):
     Path("in.smi").write_text("CCN\n" * (basirank.annotation.CHUNK + 1))
     Path("out.csv").write_text("old\n")
     real, calls = basirank.annotation.records_of, []
@@ -400,7 +409,13 @@ def test_a_run_that_fails_leaves_nothing_and_the_old_file(run, folder, monkeypat
 
     monkeypatch.setattr(basirank.annotation, "records_of", failing)
     assert "No space left" in one_line(run("annotate", "in.smi", "-o", "out.csv"))
-    assert sorted(os.listdir()) == ["in.smi", "out.csv"] and Path("out.csv").read_text() == "old\n"
+    assert Path("out.csv").read_text() == "old\n"
+    monkeypatch.undo()
+    os.chdir(folder)
+    result = run("annotate", "in.smi", "-o", "out.csv")
+    assert f"going on after {basirank.annotation.CHUNK} rows" in result.stderr
+    assert len(table(Path("out.csv").read_text())) == basirank.annotation.CHUNK + 1
+    assert sorted(os.listdir()) == ["in.smi", "out.csv"]
 
 
 @pytest.mark.parametrize(
@@ -424,7 +439,7 @@ def long_list(folder: Path) -> Path:
 
 
 @pytest.mark.parametrize(("stop", "code"), [(signal.SIGTERM, 143), (signal.SIGINT, 130)])
-def test_a_stopped_run_leaves_nothing(folder, stop, code):
+def test_a_stopped_run_leaves_no_output_and_no_complaint(folder, stop, code):
     long_list(folder)
     command = [sys.executable, "-m", "basirank", "annotate", "long.smi", "-o", "out.csv"]
     running = subprocess.Popen(command, stderr=subprocess.PIPE, text=True)
@@ -435,7 +450,7 @@ def test_a_stopped_run_leaves_nothing(folder, stop, code):
     said = running.communicate(timeout=60)[1]
     assert running.returncode == code
     assert "Traceback" not in said and len(said.splitlines()) <= 1
-    assert os.listdir() == ["long.smi"]
+    assert set(os.listdir()) <= {"long.smi", ".out.csv.part", ".out.csv.journal"}
 
 
 def test_a_closed_pipe_is_quiet(folder):

@@ -6,6 +6,7 @@ from itertools import islice
 
 import click
 
+from ..batch.compute import with_smiles
 from ..readers import InputError, open_table
 from ..records import cell
 from ..request import STANDARD, Request, within
@@ -31,7 +32,7 @@ def command(
     inputs: tuple[str, ...],
     output: str | None,
     smiles_column: str | None,
-    stdin_format: str,
+    stdin_format: str | None,
     request: Request,
     low: str,
     high: str,
@@ -53,7 +54,7 @@ def command(
 
         label = label_place(table)
         most = MOST_COMPOUNDS if picture else MOST_ROWS
-        rows = list(islice(table.rows, most + 1))
+        rows = with_smiles(list(islice(table.rows, most + 1)))
         try:
             ph = ph_grid(low, high, step or (PICTURE_STEP if picture else TABLE_STEP))  # type: ignore[arg-type]
             log_p = None if logp is None else within("log P", logp, LOG_P_RANGE, "")

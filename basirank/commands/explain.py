@@ -4,11 +4,21 @@ from __future__ import annotations
 
 import click
 
+from ..batch.compute import with_molecules
 from ..explanation import CAUTION, INTERVAL_NOTE, explain
 from ..readers import open_table
 from ..request import Request
 from ..writers import STDOUT, open_output
-from .shared import WRONG_INPUT, checked, label_place, quiet_rdkit, request_options, say, shared_options
+from .shared import (
+    WRONG_INPUT,
+    batches_of,
+    checked,
+    label_place,
+    quiet_rdkit,
+    request_options,
+    say,
+    shared_options,
+)
 
 
 @click.command("explain")
@@ -19,7 +29,7 @@ def command(
     ph: tuple[str, ...],
     output: str | None,
     smiles_column: str | None,
-    stdin_format: str,
+    stdin_format: str | None,
     request: Request,
 ) -> int:
     """Show the sites of a compound: parent value and increments of each, with their atoms and sources.
@@ -34,7 +44,7 @@ def command(
         quiet_rdkit()
         label = label_place(table)
         texts = []
-        for row in table.rows:
+        for row in (one for batch in batches_of(table.rows, 1) for one in with_molecules(batch)):
             name = row.cells[label] if label is not None else ""
             told = None
             if not row.problem:

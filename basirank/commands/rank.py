@@ -20,6 +20,7 @@ from .shared import (
     Progress,
     batches_of,
     checked,
+    label_of,
     label_place,
     on_terminal,
     quiet_rdkit,
@@ -45,7 +46,7 @@ def command(
     ph: tuple[str, ...],
     output: str | None,
     smiles_column: str | None,
-    stdin_format: str,
+    stdin_format: str | None,
     request: Request,
 ) -> int:
     """Sort a list by its first pKaH, strongest base first.
@@ -79,7 +80,7 @@ def command(
         click.echo(
             ranked_table(
                 [place for place, _ in order],
-                [(rows[n].cells[label] if label is not None else "") or rows[n].structure for _, n in order],
+                [label_of(rows[n], label) for _, n in order],
                 [records[n] for _, n in order],
                 surer,
                 schema(values, request=request),

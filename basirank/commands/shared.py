@@ -3,25 +3,25 @@
 from __future__ import annotations
 
 import os
-import signal
 import time
 from collections import Counter
-from collections.abc import Callable, Iterable, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from functools import wraps
 from itertools import islice
-from typing import TYPE_CHECKING, Any, TypeVar
+from typing import Any, TypeVar
 
 import click
 
+from ..batch.compute import records_of_rows, standings_of_rows
 from ..readers import FORMATS, InputError, Row, Table
-from ..records import Record, clean_ph, refused_record
-from ..request import PLAIN, Conditions, Request
+from ..records import clean_ph
+from ..request import Conditions, Request
 from ..writers import STDOUT, TABLE_ENDINGS, check_output, open_bytes, open_output
 
-if TYPE_CHECKING:
-    from ..kinship import Standing
+__all__ = ["PICTURE_ENDINGS", "WRONG_INPUT", "Picture", "Progress", "batches_of", "check_picture", "checked", "counted",
+           "duration", "input_options", "label_of", "label_place", "on_terminal", "quiet_rdkit", "records_of_rows",
+           "request_options", "say", "shared_options", "standings_of_rows", "summarise", "summary_line"]  # fmt: skip
 
 WRONG_INPUT = 2
 PICTURE_ENDINGS = (".svg", ".png")
@@ -53,8 +53,8 @@ def input_options(output_help: str) -> Callable[[Command], Command]:
         click.option("-o", "--output", metavar="FILE", help=output_help),
         click.option("--smiles-column", metavar="NAME",
                      help="Column of a table that holds the SMILES. [default: smiles, in any letter case]"),
-        click.option("--format", "stdin_format", type=click.Choice(FORMATS), default="smi",
-                     help="Format of standard input. [default: smi]"),
+        click.option("--format", "stdin_format", type=click.Choice(FORMATS),
+                     help="Format of the input. [default: by the ending; smi for standard input]"),
     ]  # fmt: skip
 
     def add(command: Command) -> Command:
@@ -154,44 +154,6 @@ def quiet_rdkit() -> None:
     RDLogger.DisableLog("rdApp.*")  # type: ignore[attr-defined]
 
 
-def records_of_rows(batch: Sequence[Row], ph: tuple[float, ...], request: Request = PLAIN) -> list[Record]:
-    """A record for each row of a batch; a row with a problem is refused."""
-    from ..annotation import records_of
-
-    with _interrupt_held():
-        computed = iter(records_of([row.structure for row in batch if row.problem is None], ph, request))
-    return [
-        next(computed) if row.problem is None else refused_record(row.problem, ph, request) for row in batch
-    ]
-
-
-def standings_of_rows(
-    batch: Sequence[Row], ph: tuple[float, ...], request: Request = PLAIN
-) -> list[tuple[Record, Standing | None]]:
-    """The same, each with what the order of a list needs to know."""
-    from ..annotation import standings_of
-
-    with _interrupt_held():
-        computed = iter(standings_of([row.structure for row in batch if row.problem is None], ph, request))
-    return [
-        next(computed) if row.problem is None else (refused_record(row.problem, ph, request), None)
-        for row in batch
-    ]
-
-
-@contextmanager
-def _interrupt_held() -> Iterator[None]:
-    """Let an interrupt wait for the end of a batch: RDKit's substructure search may swallow it."""
-    if not hasattr(signal, "pthread_sigmask"):
-        yield
-        return
-    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
-    try:
-        yield
-    finally:
-        signal.pthread_sigmask(signal.SIG_SETMASK, before)
-
-
 def batches_of(rows: Iterable[Row], size: int) -> Iterator[list[Row]]:
     walk = iter(rows)
     while batch := list(islice(walk, size)):
@@ -206,37 +168,101 @@ def label_place(table: Table) -> int | None:
     )
 
 
+def label_of(row: Row, place: int | None) -> str:
+    """What a compound is called in the terminal: its name, or its SMILES."""
+    name = row.cells[place] if place is not None else ""
+    return name or ("unnamed" if row.is_record else row.structure)
+
+
 def on_terminal(stream: Any) -> bool:
     return bool(getattr(stream, "isatty", bool)())
 
 
 def summarise(statuses: Counter[str], table: Table, output: str) -> None:
     """One line on what was done, on standard error."""
-    line = f"{statuses.total():,} rows: {statuses['ok']:,} ok"
-    line += f", {statuses['no_basic_site']:,} without a basic site, {statuses['refused']:,} refused"
-    if table.blank_lines[0]:
-        line += f"; {table.blank_lines[0]:,} blank lines skipped"
+    say(summary_line(statuses, table.blank_lines[0], output))
+
+
+def summary_line(statuses: Mapping[str, int], blank_lines: int, output: str) -> str:
+    """Rows by status, blank lines, and where the table went."""
+    rows = sum(statuses.values())
+    line = f"{counted(rows, 'row')}: {statuses.get('ok', 0):,} ok"
+    line += f", {statuses.get('no_basic_site', 0):,} without a basic site"
+    line += f", {statuses.get('refused', 0):,} refused"
+    if blank_lines:
+        line += f"; {counted(blank_lines, 'blank line')} skipped"
     if output != STDOUT:
         line += f"; written to {output}"
-    say(line)
+    return line
+
+
+def counted(number: int, what: str) -> str:
+    """A number and what it counts.
+
+    Examples
+    --------
+    >>> counted(1, "row"), counted(1200, "row")
+    ('1 row', '1,200 rows')
+    """
+    return f"{number:,} {what}{'' if number == 1 else 's'}"
 
 
 class Progress:
-    """Rows done and rows per second on one line of standard error, for lists that take their time."""
+    """Rows done, rows per second and time left on one line of standard error, for lists that take their time."""
 
     def __init__(self, wanted: bool) -> None:
         self._wanted = wanted
         self._start = self._last = time.monotonic()
-        self._shown = False
+        self._before: int | None = None
+        self._width = 0
 
-    def show(self, done: int, more: bool) -> None:
-        """Renew the line if there may be more to come, at most five times a second."""
+    def show(self, done: int, more: bool, share: float | None = None) -> None:
+        """Renew the line if there may be more to come, at most five times a second.
+
+        Parameters
+        ----------
+        done : int
+            Rows done, those of an earlier run included.
+        more : bool
+            Whether there may be more to come.
+        share : float, optional
+            Share of the list that has been read [-].
+        """
         now = time.monotonic()
-        if self._wanted and more and now - self._last > 0.2:
-            self._last, self._shown = now, True
-            click.echo(f"\r{done:,} rows, {done / (now - self._start):,.0f} rows/s ", nl=False, err=True)
+        if not self._wanted or not more or now - self._last <= 0.2:
+            if self._before is None:
+                self._before, self._share_before = done, share or 0.0
+            return
+        self._last = now
+        if self._before is None:
+            self._before, self._share_before = 0, 0.0
+        spent = now - self._start
+        line = f"{done:,} rows, {(done - self._before) / spent:,.0f} rows/s"
+        if share is not None and share > self._share_before:
+            left = spent * (1.0 - share) / (share - self._share_before)
+            bar = "#" * round(20 * share)
+            line = f"[{bar:<20}] {100 * share:3.0f} %  {line}, {duration(left)} left"
+        click.echo("\r" + line.ljust(self._width), nl=False, err=True)
+        self._width = len(line)
 
     def clear(self) -> None:
         """Take the line away."""
-        if self._shown:
-            click.echo("\r" + " " * 50 + "\r", nl=False, err=True)
+        if self._width:
+            click.echo("\r" + " " * self._width + "\r", nl=False, err=True)
+            self._width = 0
+
+
+def duration(seconds: float) -> str:
+    """A time for reading.
+
+    Examples
+    --------
+    >>> duration(5.2), duration(65), duration(3661)
+    ('5 s', '1 min 05 s', '1 h 01 min')
+    """
+    whole = round(seconds)
+    if whole < 60:
+        return f"{whole} s"
+    if whole < 3600:
+        return f"{whole // 60} min {whole % 60:02} s"
+    return f"{whole // 3600} h {whole % 3600 // 60:02} min"

@@ -6,6 +6,7 @@ from itertools import islice
 
 import click
 
+from ..batch.compute import with_smiles
 from ..readers import InputError, open_table
 from ..request import STANDARD, Request
 from ..writers import STDOUT, TableWriter, open_output
@@ -33,7 +34,7 @@ def command(
     inputs: tuple[str, ...],
     output: str | None,
     smiles_column: str | None,
-    stdin_format: str,
+    stdin_format: str | None,
     request: Request,
     concentration: str,
     volume: str,
@@ -51,7 +52,7 @@ def command(
     picture = check_picture(target, inputs)
     with open_table(inputs, smiles_column=smiles_column, stdin_format=stdin_format, warn=say) as table:
         quiet_rdkit()
-        rows = list(islice(table.rows, 2))
+        rows = with_smiles(list(islice(table.rows, 2)))
         label = label_place(table)
     if len(rows) != 1:
         raise InputError("titrate takes one compound")

@@ -1,0 +1,72 @@
+"""Annotate a list again and again, each time killed at a random moment, until a run comes to its end.
+
+    python killed_runs.py INPUT OUTPUT SEED
+
+Run by a test, in a process of its own with one thread, so that each run can be forked off with everything loaded.
+Prints how many runs were killed and how many of the next ones went on from where they stood.
+"""
+
+from __future__ import annotations
+
+import os
+import random
+import signal
+import sys
+import time
+from collections.abc import Callable
+from functools import partial
+
+os.environ["OMP_NUM_THREADS"] = os.environ["OPENBLAS_NUM_THREADS"] = "1"
+
+from basirank.annotation import annotate
+from basirank.batch import journal, run
+from basirank.readers import open_table
+from basirank.request import PLAIN
+
+CHUNK = 10
+LONGEST = 0.5  # seconds until a run is killed
+
+
+def one_run(source: str, target: str, say: Callable[[str], None]) -> None:
+    """A whole run, journalled after each chunk."""
+    run.CHUNK, journal.SAVE_EVERY = CHUNK, 0.0
+    opener = partial(open_table, [source], typed=target.endswith(".parquet"))
+    engine = run.engine_for()
+    run.SMALL = 10**9
+    run.to_file(opener, (7.4,), PLAIN, target, engine, lambda rows, share: None, say)
+
+
+def tell(pipe: int, message: str) -> None:
+    """Send a remark to the process that counts."""
+    os.write(pipe, message.encode())
+
+
+def main() -> None:
+    """Kill and run again until a run ends by itself."""
+    source, target, seed = sys.argv[1:]
+    moments = random.Random(int(seed))
+    annotate(["CCN"])
+    killed = resumed = 0
+    while True:
+        reading, writing = os.pipe()
+        child = os.fork()
+        if not child:
+            one_run(source, target, partial(tell, writing))
+            os._exit(0)
+        os.close(writing)
+        time.sleep(moments.uniform(0.0, LONGEST))
+        ended, _ = os.waitpid(child, os.WNOHANG)
+        if not ended:
+            os.kill(child, signal.SIGKILL)
+            _, status = os.waitpid(child, 0)
+            ended = not os.WIFSIGNALED(status)
+        resumed += b"going on after" in os.read(reading, 10_000)
+        os.close(reading)
+        if ended:
+            break
+        killed += 1
+    print(killed, resumed)
+
+
+if __name__ == "__main__":
+    main()
