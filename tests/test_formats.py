@@ -267,7 +267,7 @@ def test_rank_and_explain_read_them_too(run, folder, ending):
     assert lines[2].split()[:2] == ["1", "ethylamine"] and lines[3].split()[:2] == ["2", "pyridine"]
     told = run("explain", name).stdout
     assert "Compound   pyridine" in told and "Compound   ethylamine" in told
-    assert table(run("curve", name, "--step", "7").stdout)[0]["smiles"] == "c1ccncc1"
+    assert table(run("curve", name, "--step", "5").stdout)[0]["smiles"] == "c1ccncc1"
 
 
 def test_a_refused_record_in_explain_and_rank(run, folder):
