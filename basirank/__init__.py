@@ -1,7 +1,7 @@
 """Ranked, explained pKaH values with intervals, site by site, and the protonation state at a pH.
 
-`annotate`, `annotate_frame`, `rank`, `explain`, `curve` and `titrate` are loaded when first used, so that importing the
-package stays cheap.
+`annotate`, `annotate_frame`, `rank`, `explain`, `report_html`, `show`, `curve` and `titrate` are loaded when first
+used, so that importing the package stays cheap.
 """
 
 from __future__ import annotations
@@ -12,7 +12,9 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from .annotation import annotate, annotate_frame, rank
     from .curves import curve
+    from .display import show
     from .explanation import Explanation, explain
+    from .report import report_html
     from .titration import Titration, titrate
 
 __version__ = "0.1.0"
@@ -26,6 +28,8 @@ __all__ = [
     "curve",
     "explain",
     "rank",
+    "report_html",
+    "show",
     "titrate",
 ]
 
@@ -38,6 +42,8 @@ _HOMES = {
     "Explanation": "explanation",
     "titrate": "titration",
     "Titration": "titration",
+    "report_html": "report",
+    "show": "display",
 }
 
 

@@ -27,6 +27,7 @@ COMMANDS = {
     "rank": "Sort a list by basicity, strongest base first.",
     "annotate": "Add constants, first site and state to each row, in order.",
     "explain": "Show why a compound has its pKaH, term by term.",
+    "report": "Write a ranked list as a page with pictures, intervals and increments.",
     "curve": "Forms, charge and log D against pH, as a table or a picture.",
     "titrate": "Titration curve of a compound or its salt, with equivalence points.",
 }
@@ -41,6 +42,7 @@ Examples:
   basirank explain "OC(=O)CN"
   basirank curve "OC(=O)CN glycine" -o glycine.svg
   basirank titrate "CCN.Cl" --concentration 0.05
+  basirank report list.smi -o report.html
 """
 
 

@@ -8,9 +8,10 @@ shows.
 
 from __future__ import annotations
 
+import html
 from collections.abc import Iterable
-from dataclasses import dataclass
-from typing import TYPE_CHECKING, Literal
+from dataclasses import asdict, dataclass
+from typing import TYPE_CHECKING, Any, Literal
 
 from .records import clean_ph, equivalent_carriers, interval, pkb, reported, shown, site_atom, support
 from .request import PLAIN, STANDARD, Conditions, Request
@@ -155,6 +156,8 @@ class Explanation:
         Share of molecules with a proton on a base site at pH 2, 7.4 and 10.
     conditions : Conditions
         Temperature and ionic strength of everything but the sums of the sites, which are at 25 C and 0.
+    parent_atoms : tuple of int
+        Number in the input of each atom of `parent_smiles`, in the order in which they stand there.
     """
 
     structure: str
@@ -171,11 +174,24 @@ class Explanation:
     buffers: tuple[BufferLine, ...] = ()
     protonated_at: tuple[tuple[float, float], ...] = ()
     conditions: Conditions = STANDARD
+    parent_atoms: tuple[int, ...] = ()
 
     def __str__(self) -> str:
         from .wording import lines_of
 
         return "\n".join(line.rstrip() for line in lines_of(self))
+
+    def _repr_svg_(self) -> str | None:
+        """The pictures, for a notebook; None where the structure cannot be drawn."""
+        from .depiction import explanation_svg
+
+        return explanation_svg(self)
+
+    def _repr_html_(self) -> str:
+        """Pictures and text, for a notebook."""
+        from .depiction import explanation_svg
+
+        return f"<div>{explanation_svg(self) or ''}<pre>{html.escape(str(self))}</pre></div>"
 
 
 def explain(
@@ -255,7 +271,22 @@ def explanation_of(structure: str, prediction: Prediction, request: Request = PL
         _buffer_lines(prediction, steps),
         _protonated_at(prediction),
         request.conditions,
+        tuple(parent.atom_index[atom] for atom in parent.output_order),
     )
+
+
+def as_dict(told: Explanation) -> dict[str, Any]:
+    """An explanation as plain lists and numbers, for JSON; the names are those of the attributes.
+
+    Values of a site are as computed, and its terms sum to them; constants and shares are rounded as they are
+    shown.
+
+    Examples
+    --------
+    >>> as_dict(explain("CCN"))["steps"][0]["name"]
+    'pKaH 1'
+    """
+    return asdict(told)
 
 
 def _site_line(prediction: Prediction, place: int, request: Request) -> SiteLine:

@@ -59,6 +59,8 @@ def test_the_wheel_holds_the_tables_and_no_holdout(wheel: Path):
             )
     assert "basirank/py.typed" in names
     assert not any(name.endswith(DEVELOPERS_ONLY) or name.startswith("tests/") for name in names)
+    for part in (ROOT / "basirank/page").iterdir():
+        assert f"basirank/page/{part.name}" in names
 
 
 def test_the_installed_command_ranks_far_from_the_source(wheel: Path, tmp_path: Path):
@@ -76,4 +78,6 @@ def test_the_installed_command_ranks_far_from_the_source(wheel: Path, tmp_path: 
     assert float(rows[0]["pkah_1"]) > float(rows[1]["pkah_1"]) > 0
     where = call(scripts / "python", "-c", "import basirank; print(basirank.__file__)", cwd=tmp_path)
     assert Path(where.strip()).is_relative_to(tmp_path.resolve()) or str(tmp_path) in where
+    call(scripts / "basirank", "report", "CCN", "-o", "report.html", cwd=tmp_path)
+    assert "<table" in (tmp_path / "report.html").read_text(encoding="utf-8")
     assert "Site 1" in call(scripts / "basirank", "explain", "CCN", cwd=tmp_path)

@@ -9,7 +9,7 @@ from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from functools import wraps
 from itertools import islice
-from typing import Any, TypeVar
+from typing import Any, TypeVar, cast
 
 import click
 
@@ -17,11 +17,33 @@ from ..batch.compute import records_of_rows, standings_of_rows
 from ..readers import FORMATS, InputError, Row, Table
 from ..records import clean_ph
 from ..request import Conditions, Request
+from ..selection import SORT_KEYS, SUPPORTS, Selection
 from ..writers import STDOUT, TABLE_ENDINGS, check_output, open_bytes, open_output
 
-__all__ = ["PICTURE_ENDINGS", "WRONG_INPUT", "Picture", "Progress", "batches_of", "check_picture", "checked", "counted",
-           "duration", "input_options", "label_of", "label_place", "on_terminal", "quiet_rdkit", "records_of_rows",
-           "request_options", "say", "shared_options", "standings_of_rows", "summarise", "summary_line"]  # fmt: skip
+__all__ = [
+    "PICTURE_ENDINGS",
+    "WRONG_INPUT",
+    "Picture",
+    "Progress",
+    "batches_of",
+    "check_picture",
+    "checked",
+    "counted",
+    "duration",
+    "input_options",
+    "label_of",
+    "label_place",
+    "no_row_left",
+    "on_terminal",
+    "quiet_rdkit",
+    "records_of_rows",
+    "request_options",
+    "say",
+    "shared_options",
+    "standings_of_rows",
+    "summarise",
+    "summary_line",
+]
 
 WRONG_INPUT = 2
 PICTURE_ENDINGS = (".svg", ".png")
@@ -104,6 +126,49 @@ def request_options(*, forms: bool = False, pkb: bool = False) -> Callable[[Comm
     return add
 
 
+def selection_options(command: Command) -> Command:
+    """The options that choose and sort the rows of a ranked list; the command gets them as one `selection`."""
+
+    @wraps(command)
+    def gathered(
+        *arguments: Any,
+        top: int | None,
+        between: tuple[float, float] | None,
+        site_class: str,
+        support: str | None,
+        sort: str,
+        reverse: bool,
+        **others: Any,
+    ) -> Any:
+        if between is not None and not between[0] <= between[1]:
+            raise InputError(f"--between takes the lower pKaH first, not {between[0]:g} {between[1]:g}")
+        chosen = Selection(top, between, site_class.strip(), support or "", sort, reverse)
+        return command(*arguments, selection=chosen, **others)
+
+    options = [
+        click.option("--top", type=click.IntRange(min=1), metavar="N", help="Keep the first N rows after sorting."),
+        click.option("--between", type=float, nargs=2, metavar="LOW HIGH",
+                     help="Keep rows whose first pKaH lies between two values."),
+        click.option("--class", "site_class", default="", metavar="NAME",
+                     help="Keep rows whose first site has NAME in its class (amidine, cyclic, ...)."),
+        click.option("--support", type=click.Choice(SUPPORTS), metavar="|".join(SUPPORTS),
+                     help="Keep rows whose first pKaH is supported, or extrapolated."),
+        click.option("--sort", type=click.Choice(SORT_KEYS), default="pkah", metavar="|".join(SORT_KEYS),
+                     help="Sort by this, numbers from the highest. [default: pkah]"),
+        click.option("--reverse", is_flag=True, help="Sort the other way round."),
+    ]  # fmt: skip
+    result: Any = gathered
+    for option in reversed(options):
+        result = option(result)
+    return cast("Command", result)
+
+
+def no_row_left(order: Sequence[object], rows: Sequence[object]) -> None:
+    """Say so where filters left nothing of a list."""
+    if not order:
+        say(f"no row of {len(rows):,} fits the filters")
+
+
 def checked(
     ph: Iterable[str], output: str | None, inputs: Sequence[str], endings: Sequence[str] | None = None
 ) -> tuple[float, ...]:
@@ -178,12 +243,12 @@ def on_terminal(stream: Any) -> bool:
     return bool(getattr(stream, "isatty", bool)())
 
 
-def summarise(statuses: Counter[str], table: Table, output: str) -> None:
+def summarise(statuses: Counter[str], table: Table, output: str, kept: int | None = None) -> None:
     """One line on what was done, on standard error."""
-    say(summary_line(statuses, table.blank_lines[0], output))
+    say(summary_line(statuses, table.blank_lines[0], output, kept))
 
 
-def summary_line(statuses: Mapping[str, int], blank_lines: int, output: str) -> str:
+def summary_line(statuses: Mapping[str, int], blank_lines: int, output: str, kept: int | None = None) -> str:
     """Rows by status, blank lines, and where the table went."""
     rows = sum(statuses.values())
     line = f"{counted(rows, 'row')}: {statuses.get('ok', 0):,} ok"
@@ -191,6 +256,8 @@ def summary_line(statuses: Mapping[str, int], blank_lines: int, output: str) -> 
     line += f", {statuses.get('refused', 0):,} refused"
     if blank_lines:
         line += f"; {counted(blank_lines, 'blank line')} skipped"
+    if kept is not None and kept < rows:
+        line += f"; {kept:,} kept"
     if output != STDOUT:
         line += f"; written to {output}"
     return line
