@@ -1,7 +1,7 @@
 """Examples of the documentation: run where they stand, so that what a page shows is what a user gets.
 
 A page is renewed by running its fenced blocks in order in a folder of its own, which holds the demo list as
-`data/demo.smi`, `list.smi`, `list.csv` and `library.csv.gz`:
+`data/demo.smi`, `list.smi`, `list.csv`, `library.csv.gz` and (twenty of them) `library.sdf`, and `parts/`:
 
 - ```console: lines after `$ ` are run, and what they print takes the place of what stood there. A line `...` in an
   output stands for lines left out: as many lines as before it and after it are kept.
@@ -30,7 +30,9 @@ from pathlib import Path
 from tempfile import TemporaryDirectory
 from typing import Any
 
+import pandas as pd
 from click.testing import CliRunner
+from rdkit import Chem
 
 from basirank.cli import commands
 
@@ -55,6 +57,13 @@ def workplace() -> Iterator[Path]:
         text = "compound,SMILES\n" + "".join(f"{label},{smiles}\n" for smiles, label in rows)
         (folder / "list.csv").write_text(text, encoding="utf-8")
         (folder / "library.csv.gz").write_bytes(gzip.compress(text.encode()))
+        with Chem.SDWriter(str(folder / "library.sdf")) as writer:
+            for smiles, label in rows[:20]:
+                mol = Chem.MolFromSmiles(smiles)
+                mol.SetProp("_Name", label)
+                writer.write(mol)
+        (folder / "parts").mkdir()
+        pd.DataFrame(rows, columns=["smiles", "name"]).to_parquet(folder / "parts" / "part-0.parquet")
         with chdir(folder):
             yield folder
 
