@@ -263,7 +263,7 @@ def _structures_of(frame: pd.DataFrame, smiles_column: str) -> list[object]:
     try:
         place = structure_column(list(frame.columns), smiles_column)
     except ValueError as error:
-        raise ValueError(f"the frame has {error}") from None
+        raise ValueError(f"the frame: {error}") from None
     return frame.iloc[:, place].tolist()
 
 

@@ -15,6 +15,7 @@ from conftest import heading, table
 
 import basirank.annotation
 import basirank.commands.rank
+import basirank.commands.shared
 import basirank.readers
 from basirank.records import schema
 from basirank.writers import ranked_table
@@ -465,3 +466,18 @@ def test_a_closed_pipe_is_quiet(folder):
     assert running.stderr.read() == b""
     running.stderr.close()
     assert running.wait(timeout=60) != 0
+
+
+def test_progress_shows_rate_share_and_time_left(capsys, monkeypatch):
+    clock = iter([100.0, 110.0, 111.0, 111.1, 120.0])
+    monkeypatch.setattr(basirank.commands.shared.time, "monotonic", lambda: next(clock))
+    progress = basirank.commands.shared.Progress(True)
+    progress.show(50_000, True, 0.2)  # where an earlier run stopped
+    progress.show(51_000, True)
+    progress.show(51_100, True, 0.21)  # too soon after the last
+    progress.show(60_000, True, 0.25)
+    progress.clear()
+    shown = capsys.readouterr().err.split("\r")
+    assert shown[1] == "51,000 rows, 1,000 rows/s"
+    assert shown[2].startswith("[#####               ]  25 %  60,000 rows, 1,000 rows/s, 2 min 30 s left")
+    assert set(shown[3]) == {" "} and shown[4] == ""

@@ -281,6 +281,7 @@ class Progress:
         self._wanted = wanted
         self._start = self._last = time.monotonic()
         self._before: int | None = None
+        self._share_before = 0.0
         self._width = 0
 
     def show(self, done: int, more: bool, share: float | None = None) -> None:
@@ -296,13 +297,12 @@ class Progress:
             Share of the list that has been read [-].
         """
         now = time.monotonic()
+        if self._before is None:  # an earlier run may have done most of them
+            self._before, self._share_before, self._start = done, share or 0.0, now
+            return
         if not self._wanted or not more or now - self._last <= 0.2:
-            if self._before is None:
-                self._before, self._share_before = done, share or 0.0
             return
         self._last = now
-        if self._before is None:
-            self._before, self._share_before = 0, 0.0
         spent = now - self._start
         line = f"{done:,} rows, {(done - self._before) / spent:,.0f} rows/s"
         if share is not None and share > self._share_before:
