@@ -22,6 +22,7 @@ from residual_fit import (
     sparse_fit,
     sparse_prediction,
 )
+from scipy import linalg
 
 BASIS = 900
 """Basis sites of a group in the sparse process, as `scripts/train` has it."""
@@ -87,7 +88,7 @@ def kernel_mean(
     """Mean of a Gaussian process: noise is a variance for each row."""
     inner = kernel[np.ix_(train, train)]
     inner[np.diag_indices_from(inner)] += noise[train]
-    return kernel[np.ix_(test, train)] @ np.linalg.solve(inner, target[train])
+    return kernel[np.ix_(test, train)] @ linalg.solve(inner, target[train], assume_a="pos", overwrite_a=True)
 
 
 def site_covariance(setting: Setting) -> Callable[[np.ndarray], np.ndarray]:
