@@ -23,11 +23,20 @@ def guard(*arguments: str | Path) -> subprocess.CompletedProcess[str]:
     )
 
 
+@pytest.fixture(scope="module")
+def present(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """The first thirty structures with their present predictions."""
+    path = tmp_path_factory.mktemp("guard") / "guard.csv"
+    path.write_text("\n".join(STORED.read_text(encoding="utf-8").splitlines()[:31]) + "\n", encoding="utf-8")
+    assert guard("--file", path, "--accept").returncode == 0
+    return path
+
+
 @pytest.fixture
-def disturbed(tmp_path: Path) -> Path:
-    """The first thirty stored rows, three of them changed."""
-    with STORED.open(encoding="utf-8", newline="") as handle:
-        rows = list(csv.DictReader(handle))[:30]
+def disturbed(present: Path, tmp_path: Path) -> Path:
+    """The same with four rows changed, one of them by no more than is allowed."""
+    with present.open(encoding="utf-8", newline="") as handle:
+        rows = list(csv.DictReader(handle))
     with_base = [row for row in rows if row["pkah_1"] and row["net_charge"]]
     with_base[0]["pkah_1"] = f"{float(with_base[0]['pkah_1']) - 1.5:.2f}"
     with_base[1]["net_charge"] = f"{float(with_base[1]['net_charge']) + 0.03:.2f}"
