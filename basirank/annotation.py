@@ -62,8 +62,6 @@ def _computed(
 ) -> list[tuple[Record, Standing | None]]:
     from rdkit import Chem
 
-    from .prediction import predict
-
     readable = [
         n for n, item in enumerate(structures) if isinstance(item, str | Chem.Mol) and not _blank(item)
     ]
@@ -72,15 +70,21 @@ def _computed(
         part = readable[start : start + CHUNK]
         batch: list[Any] = [structures[n] for n in part]
         with _collector_at_rest():
-            predictions = predict(batch, ph=ph, conditions=request.conditions, standings=standings)
-            found.update(
-                (n, (record(one, ph, request), one.standing))
-                for n, one in zip(part, predictions, strict=True)
-            )
+            found.update(zip(part, _of_chunk(batch, ph, request, standings), strict=True))
     return [
         found[n] if n in found else (refused_record(_why_unread(item), ph, request), None)
         for n, item in enumerate(structures)
     ]
+
+
+def _of_chunk(
+    batch: list[Any], ph: Sequence[float], request: Request, standings: bool
+) -> list[tuple[Record, Standing | None]]:
+    """Records of a chunk; what they were made from is gone when this returns, before the collector wakes."""
+    from .prediction import predict
+
+    predictions = predict(batch, ph=ph, conditions=request.conditions, standings=standings)
+    return [(record(one, ph, request), one.standing) for one in predictions]
 
 
 @contextmanager
