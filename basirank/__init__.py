@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from .annotation import annotate, annotate_frame, rank
+    from .conditioning import LocalModel, Measurement, condition
     from .curves import curve
     from .display import show
     from .explanation import Explanation, explain
@@ -21,10 +22,13 @@ __version__ = "0.1.0"
 
 __all__ = [
     "Explanation",
+    "LocalModel",
+    "Measurement",
     "Titration",
     "__version__",
     "annotate",
     "annotate_frame",
+    "condition",
     "curve",
     "explain",
     "rank",
@@ -37,6 +41,9 @@ _HOMES = {
     "annotate": "annotation",
     "annotate_frame": "annotation",
     "rank": "annotation",
+    "condition": "conditioning",
+    "LocalModel": "conditioning",
+    "Measurement": "conditioning",
     "curve": "curves",
     "explain": "explanation",
     "Explanation": "explanation",

@@ -30,6 +30,7 @@ from .request import PLAIN, Conditions, Request
 if TYPE_CHECKING:
     import pandas as pd
 
+    from .conditioning import LocalModel
     from .kinship import Standing
 
 CHUNK = 500  # structures that go through the stages together: enough to fill the blocks of the regression
@@ -83,7 +84,9 @@ def _of_chunk(
     """Records of a chunk; what they were made from is gone when this returns, before the collector wakes."""
     from .prediction import predict
 
-    predictions = predict(batch, ph=ph, conditions=request.conditions, standings=standings)
+    predictions = predict(
+        batch, ph=ph, conditions=request.conditions, standings=standings, local=request.local
+    )
     return [(record(one, ph, request), one.standing) for one in predictions]
 
 
@@ -117,6 +120,7 @@ def annotate(
     ionic_strength: float = 0.0,
     forms: bool = False,
     show_pkb: bool = False,
+    local: LocalModel | None = None,
 ) -> pd.DataFrame:
     """Constants, first site and protonation state of each structure.
 
@@ -132,6 +136,8 @@ def annotate(
         Add the shares of the neutral form and of the zwitterion.
     show_pkb : bool
         Add pKb beside pKaH.
+    local : LocalModel, optional
+        Corrections conditioned on measured constants, from `condition`.
 
     Returns
     -------
@@ -145,7 +151,7 @@ def annotate(
     """
     items, index = _listed(structures)
     values = clean_ph(ph)
-    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb)
+    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb, local)
     return _frame(records_of(items, values, request), schema(values, request=request), index)
 
 
@@ -158,6 +164,7 @@ def annotate_frame(
     ionic_strength: float = 0.0,
     forms: bool = False,
     show_pkb: bool = False,
+    local: LocalModel | None = None,
 ) -> pd.DataFrame:
     """The rows of a frame with the columns of `annotate` after their own.
 
@@ -172,7 +179,7 @@ def annotate_frame(
         Column that holds the structures, in any letter case.
     ph : float or iterable of float
         pH of the state columns [-], -2 to 16.
-    temperature, ionic_strength, forms, show_pkb
+    temperature, ionic_strength, forms, show_pkb, local
         As for `annotate`.
 
     Raises
@@ -181,7 +188,7 @@ def annotate_frame(
         No such column (the message lists those there are), a wrong pH or wrong conditions.
     """
     values = clean_ph(ph)
-    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb)
+    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb, local)
     records = records_of(_structures_of(frame, smiles_column), values, request)
     return _beside(frame, records, schema(values, request=request))
 
@@ -195,6 +202,7 @@ def rank(
     ionic_strength: float = 0.0,
     forms: bool = False,
     show_pkb: bool = False,
+    local: LocalModel | None = None,
 ) -> pd.DataFrame:
     """The same rows sorted by the first pKaH, strongest base first, with their `rank` in front.
 
@@ -208,7 +216,7 @@ def rank(
         Column that holds the structures when a frame is given.
     ph : float or iterable of float
         pH of the state columns [-], -2 to 16.
-    temperature, ionic_strength, forms, show_pkb
+    temperature, ionic_strength, forms, show_pkb, local
         As for `annotate`.
 
     Returns
@@ -226,7 +234,7 @@ def rank(
     from .kinship import above_next
 
     values = clean_ph(ph)
-    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb)
+    request = Request(Conditions(temperature, ionic_strength), forms, show_pkb, local)
     columns = schema(values, ranked=True, request=request)
     frame = structures if isinstance(structures, pd.DataFrame) else None
     index: pd.Index | None

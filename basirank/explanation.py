@@ -19,6 +19,7 @@ from .request import PLAIN, STANDARD, Conditions, Request
 if TYPE_CHECKING:
     from rdkit import Chem
 
+    from .conditioning import LocalModel
     from .evidence import Analogue
     from .prediction import Prediction
 
@@ -201,6 +202,7 @@ def explain(
     temperature: float = 25.0,
     ionic_strength: float = 0.0,
     show_pkb: bool = False,
+    local: LocalModel | None = None,
 ) -> Explanation:
     """The sites, terms, interactions, constants and states of one compound.
 
@@ -214,6 +216,8 @@ def explain(
         Of the constants and states [C], 0 to 60, and [mol/L], 0 to 0.5.
     show_pkb : bool
         Give pKb beside each pKaH.
+    local : LocalModel, optional
+        Corrections conditioned on measured constants, from `condition`.
 
     Returns
     -------
@@ -226,15 +230,19 @@ def explain(
         pH, temperature or ionic strength out of range or not a number.
     """
     values = clean_ph(ph)
-    request = Request(Conditions(temperature, ionic_strength), pkb=show_pkb)
+    request = Request(Conditions(temperature, ionic_strength), pkb=show_pkb, local=local)
     from rdkit import Chem
-
-    from .prediction import predict
 
     if not isinstance(structure, str | Chem.Mol) or (isinstance(structure, str) and not structure.strip()):
         return Explanation(str(structure), "", "refused", "no structure given")
     written = structure.strip() if isinstance(structure, str) else Chem.MolToSmiles(structure)
-    return explanation_of(written, predict([structure], ph=values, conditions=request.conditions)[0], request)
+    return explanation_of(written, _predicted(structure, values, request), request)
+
+
+def _predicted(structure: str | Chem.Mol, ph: tuple[float, ...], request: Request) -> Prediction:
+    from .prediction import predict
+
+    return predict([structure], ph=ph, conditions=request.conditions, local=request.local)[0]
 
 
 def explanation_of(structure: str, prediction: Prediction, request: Request = PLAIN) -> Explanation:

@@ -8,7 +8,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import islice
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 from rdkit import Chem, rdBase
@@ -25,6 +25,9 @@ from .residual import Correction, corrections, model
 from .sites import Site, find_sites
 from .structures import Parent, Refusal, read_parent
 from .substituents import Substituents
+
+if TYPE_CHECKING:
+    from .conditioning import LocalModel
 
 LOWEST, HIGHEST = -5.0, 16.0
 """Constants outside these are not reported."""
@@ -117,13 +120,15 @@ def site_lines(parent: Parent) -> Lines:
     return Lines(graph, tuple(sites), tuple(itemised), tuple(values))
 
 
-def corrections_of(batch: Sequence[Lines]) -> list[tuple[Correction, ...]]:
+def corrections_of(batch: Sequence[Lines], local: LocalModel | None = None) -> list[tuple[Correction, ...]]:
     """Corrections from measured neighbours of the sites of many parents.
 
     Parameters
     ----------
     batch : sequence of Lines
         Lines of each parent.
+    local : LocalModel, optional
+        A user's own measured constants, by which they are moved.
 
     Returns
     -------
@@ -133,7 +138,10 @@ def corrections_of(batch: Sequence[Lines]) -> list[tuple[Correction, ...]]:
     graphs = [lines.graph for lines in batch for _ in lines.sites]
     sites = [site for lines in batch for site in lines.sites]
     values = [value for lines in batch for value in lines.values]
-    found = iter(corrections(graphs, sites, values))
+    trained = corrections(graphs, sites, values)
+    if local is not None:
+        trained = [local.moved(*of_site) for of_site in zip(graphs, sites, values, trained, strict=True)]
+    found = iter(trained)
     return [tuple(islice(found, len(lines.sites))) for lines in batch]
 
 
@@ -191,6 +199,7 @@ def predict(
     ph: Sequence[float] = (7.4,),
     conditions: Conditions = STANDARD,
     standings: bool = False,
+    local: LocalModel | None = None,
 ) -> list[Prediction]:
     """Predict a batch of structures.
 
@@ -204,6 +213,8 @@ def predict(
         Temperature and ionic strength of the constants and states.
     standings : bool
         Whether to keep what the order of a list needs (`kinship`).
+    local : LocalModel, optional
+        Corrections conditioned on a user's own measured constants (`conditioning`).
 
     Returns
     -------
@@ -218,7 +229,7 @@ def predict(
         except Refusal as reason:
             predictions[index] = Prediction("refused", str(reason), None, (), None, None, ())
     ready = [(index, parent, site_lines(parent)) for index, parent in parents]
-    corrected = corrections_of([lines for *_, lines in ready])
+    corrected = corrections_of([lines for *_, lines in ready], local)
     estimates = [estimates_of(lines, found) for (*_, lines), found in zip(ready, corrected, strict=True)]
     sets = [site_set(lines, found, conditions) for (*_, lines), found in zip(ready, estimates, strict=True)]
     for (index, parent, lines), found, kept, sites, equilibrium in zip(

@@ -7,6 +7,10 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from .conditioning import LocalModel
 
 STANDARD_TEMPERATURE = 25.0
 """Temperature of the constants of this package [C]."""
@@ -84,11 +88,14 @@ class Request:
         Shares of the neutral form and of the zwitterion at each pH.
     pkb : bool
         pKb beside each pKaH.
+    local : LocalModel or None
+        Corrections conditioned on a user's own measured constants (`conditioning`).
     """
 
     conditions: Conditions = STANDARD
     forms: bool = False
     pkb: bool = False
+    local: LocalModel | None = None
 
 
 PLAIN = Request()

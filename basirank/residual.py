@@ -229,6 +229,7 @@ class Model:
     quantile: dict[str, float]
     threshold: float
     law_error: float
+    noise: float
 
     @property
     def law_half_width(self) -> float:
@@ -279,7 +280,7 @@ def model() -> Model:
     )
 
 
-_SETTINGS = ("classes", "families", "spread", "quantile", "threshold", "law_error")
+_SETTINGS = ("classes", "families", "spread", "quantile", "threshold", "law_error", "noise")
 
 GROUP_ARRAYS = (
     "vocabulary", "rows", "columns", "feature_weight", "total", "value",
