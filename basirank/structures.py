@@ -162,6 +162,8 @@ def _finished(
         raise Refusal(f"over {MAX_HEAVY_ATOMS:,} heavy atoms")
     if charged:
         mol, numbers = neutralise(mol, numbers)
+    if (not plain or notes) and not is_organic(mol):
+        raise Refusal("no organic part")
     features = written_features(text)
     mol, numbers = rewrite(mol, numbers, features)
     notes += _cautions(mol, features)
@@ -216,8 +218,6 @@ def _refuse_queries(mol: Chem.Mol) -> None:
 
 def _refuse_component(mol: Chem.Mol) -> None:
     """Refuse what can't be computed in the component that is kept."""
-    if not is_organic(mol):
-        raise Refusal("no organic part")
     if has_metal(mol):
         symbol = next(atom.GetSymbol() for atom in mol.GetAtoms() if is_metal(atom))
         raise Refusal(f"a metal complex or organometallic compound ({symbol})")

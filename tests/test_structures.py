@@ -529,3 +529,8 @@ def test_every_pattern_of_the_tables_can_be_read_and_has_a_source(name):
             assert not row["cheap_test"] or Chem.MolFromSmarts(row["cheap_test"]) is not None
         else:
             assert Chem.MolFromSmiles(row["smiles"]) is not None
+
+
+@pytest.mark.parametrize("text", ["[NH4+]", "[NH2-]", "[NH4+].[Cl-]", "[Na][NH2]"])
+def test_an_ion_of_ammonia_is_ammonia(text):
+    assert read_parent(text).smiles == "N"
