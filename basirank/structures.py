@@ -96,6 +96,8 @@ def read_parent(structure: str | Chem.Mol) -> Parent:
         if isinstance(structure, Chem.Mol):
             return _from_mol(structure)
         raise Refusal("neither a SMILES text nor a molecule")
+    except Chem.MolSanitizeException as problem:  # such as a bond to sodium whose ions have no sound valence
+        raise Refusal(f"its ions are no sound structure: {str(problem).lower()}") from None
     finally:
         del lock
 

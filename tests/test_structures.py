@@ -534,3 +534,9 @@ def test_every_pattern_of_the_tables_can_be_read_and_has_a_source(name):
 @pytest.mark.parametrize("text", ["[NH4+]", "[NH2-]", "[NH4+].[Cl-]", "[Na][NH2]"])
 def test_an_ion_of_ammonia_is_ammonia(text):
     assert read_parent(text).smiles == "N"
+
+
+@pytest.mark.parametrize("text", ["CC(=O[Na+])C", "CCN1CCCC1=O[Na+]", "[Na+]Clc1ccccc1"])
+def test_a_bond_to_sodium_that_leaves_no_sound_ion_is_refused(text):
+    with pytest.raises(Refusal, match="no sound structure"):
+        read_parent(text)
