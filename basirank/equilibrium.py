@@ -24,9 +24,9 @@ from .binding import (
     Floats,
     Integers,
     binding_polynomial,
-    mean_field,
     microstates,
 )
+from .clusters import mean_field
 
 STATES_AT_ONCE = 2**18  # microstates (of all molecules together) held in memory at a time
 

@@ -11,7 +11,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .binding import EXACT_SITES, LN10, Floats, binding_polynomial, mean_field
+from .binding import EXACT_SITES, LN10, Floats, binding_polynomial
+from .clusters import mean_field
 from .equilibrium import SiteSet
 
 

@@ -11,7 +11,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from basirank.binding import binding_polynomial, clusters, mean_field
+from basirank.binding import binding_polynomial
+from basirank.clusters import clusters, mean_field
 from basirank.equilibrium import (
     Equilibrium,
     SiteSet,
