@@ -18,6 +18,9 @@ AROMATIC = 4
 _ORDER = {1.0: 1, 2.0: 2, 3.0: 3, 1.5: AROMATIC}
 """Order code by RDKit's bond type as a number, which is cheaper to ask for than the type."""
 
+Arm = tuple[int, int]
+"""A neighbour and the order code of the bond to it."""
+
 Star = tuple[int, ...]
 """An atom's type, then for each neighbour, sorted, type and bond order in one number (see `star_parts`)."""
 
@@ -38,13 +41,13 @@ class Graph:
         Hydrogen atoms carried, isotopic ones included.
     aromatic : list of bool
         Aromatic in RDKit's model.
-    neighbours : list of list of (int, int)
+    neighbours : list of list of Arm
         (atom, bond order code) pairs, hydrogen atoms left out.
     kind : list of str
         Token of the kind of atom.
     rings : tuple of tuple of int
         Smallest rings, as RDKit's symmetrised set gives them.
-    atom_rings : list of list of int
+    atom_rings : list of tuple of int
         Positions in `rings` of the rings that hold the atom.
     ring_size : list of int
         Size of the smallest ring that holds the atom, 0 for a chain atom.
@@ -56,10 +59,10 @@ class Graph:
     charge: list[int]
     hydrogens: list[int]
     aromatic: list[bool]
-    neighbours: list[list[tuple[int, int]]]
+    neighbours: list[list[Arm]]
     kind: list[str]
     rings: tuple[tuple[int, ...], ...]
-    atom_rings: list[list[int]]
+    atom_rings: list[tuple[int, ...]]
     ring_size: list[int]
     star: list[Star]
 
@@ -73,19 +76,11 @@ class Graph:
         return self.ring_size[atom]
 
 
-_TOKENS: dict[tuple[int, bool, int, int], str] = {}
-
-
 def _token(number: int, aromatic: bool, unsaturation: int, charge: int) -> str:
     """Kind of an atom: element, aromatic or number of pi bonds (3 none, 2 one, 1 two), sign of its charge."""
-    key = (number, aromatic, unsaturation, charge)
-    token = _TOKENS.get(key)
-    if token is None:
-        symbol = _SYMBOL(number)
-        token = symbol.lower() if aromatic else f"{symbol}{max(3 - unsaturation, 0)}"
-        token += "+" * max(charge, 0) + "-" * max(-charge, 0)
-        _TOKENS[key] = token
-    return token
+    symbol = _SYMBOL(number)
+    token = symbol.lower() if aromatic else f"{symbol}{max(3 - unsaturation, 0)}"
+    return token + "+" * max(charge, 0) + "-" * max(-charge, 0)
 
 
 @dataclass(frozen=True, slots=True)
@@ -103,20 +98,31 @@ class AtomType:
 # Types are numbered as they are met; there are a few hundred in chemistry, so the list stays short. The
 # numbers differ from run to run and serve only to compare and to remember.
 _TYPES: list[AtomType] = []
-_TYPE_NUMBERS: dict[tuple[int, bool, int, str, int, int], int] = {}
+_TYPE_NUMBERS: dict[AtomType, int] = {}
 
+_Seen = tuple[int, bool, int, int, int, int]
+"""Element, aromatic, charge, pi bonds, hydrogens and neighbours of an atom."""
+_KNOWN: dict[_Seen, tuple[int, str]] = {}
+"""Type number and kind by what is seen of an atom."""
 
 _STARS: dict[Star, Star] = {}
 """One object for equal stars: a chunk of molecules then holds, and frees, far fewer of them."""
 _MOST_STARS = 50_000
 
+_ARMS: list[list[Arm]] = [[] for _ in range(AROMATIC + 1)]
+"""One object for equal arms, by order code and atom; grown to the largest molecule met."""
 
-def _type_number(key: tuple[int, bool, int, str, int, int]) -> int:
-    number = _TYPE_NUMBERS.get(key)
-    if number is None:
-        number = _TYPE_NUMBERS[key] = len(_TYPES)
-        _TYPES.append(AtomType(*key))
-    return number
+
+def _look_up(seen: _Seen) -> tuple[int, str]:
+    """Type number and kind of an atom that is seen for the first time."""
+    element, aromatic, charge, unsaturation, hydrogens, degree = seen
+    kind = _token(element, aromatic, unsaturation, charge)
+    own = AtomType(element, aromatic, charge, kind, hydrogens, degree)
+    number = _TYPE_NUMBERS.setdefault(own, len(_TYPES))
+    if number == len(_TYPES):
+        _TYPES.append(own)
+    _KNOWN[seen] = number, kind
+    return number, kind
 
 
 def type_of(number: int) -> AtomType:
@@ -144,44 +150,89 @@ def build_graph(mol: Chem.Mol) -> Graph:
     """
     number = mol.GetNumAtoms()
     # by index: RDKit's own iterators cost twice as much
-    atoms = [mol.GetAtomWithIdx(index) for index in range(number)]
-    element = [atom.GetAtomicNum() for atom in atoms]
-    charge = [atom.GetFormalCharge() for atom in atoms]
-    aromatic = [atom.GetIsAromatic() for atom in atoms]
-    hydrogens = [atom.GetTotalDegree() for atom in atoms]  # less the bonds, below
-    neighbours: list[list[tuple[int, int]]] = [[] for _ in atoms]
+    atoms = list(map(mol.GetAtomWithIdx, range(number)))
+    element = list(map(Chem.Atom.GetAtomicNum, atoms))
+    charge = list(map(Chem.Atom.GetFormalCharge, atoms))
+    aromatic = list(map(Chem.Atom.GetIsAromatic, atoms))
+    total_degree = list(map(Chem.Atom.GetTotalDegree, atoms))
+    neighbours, unsaturation, isotopic = _bonds(mol, element)
+    degree = list(map(len, neighbours))
+    hydrogens = [total - bonds for total, bonds in zip(total_degree, degree, strict=True)]
+    for atom in isotopic:
+        hydrogens[atom] -= sum(other.GetAtomicNum() != 1 for other in atoms[atom].GetNeighbors())
+    types, kind = [], []
+    for seen in zip(element, aromatic, charge, unsaturation, hydrogens, degree, strict=True):
+        own, name = _KNOWN.get(seen) or _look_up(seen)
+        types.append(own)
+        kind.append(name)
+    return Graph(
+        element,
+        charge,
+        hydrogens,
+        aromatic,
+        neighbours,
+        kind,
+        *_rings(mol, number),
+        _stars(types, neighbours),
+    )
+
+
+def _bonds(mol: Chem.Mol, element: list[int]) -> tuple[list[list[Arm]], list[int], list[int]]:
+    """Neighbours and pi bonds of each atom, and the isotopic hydrogen atoms, whose bonds are left out."""
+    number = len(element)
+    while len(_ARMS[AROMATIC]) < number:
+        for order, arms in enumerate(_ARMS):
+            arms.append((len(arms), order))
+    neighbours: list[list[Arm]] = [[] for _ in element]
     unsaturation = [0] * number
-    for index in range(mol.GetNumBonds()):
-        bond = mol.GetBondWithIdx(index)
-        first, second = bond.GetBeginAtomIdx(), bond.GetEndAtomIdx()
-        if element[first] != 1:
-            hydrogens[second] -= 1
-        if element[second] != 1:
-            hydrogens[first] -= 1
-        if element[first] == 1 or element[second] == 1:
+    isotopic = [atom for atom, one in enumerate(element) if one == 1] if 1 in element else []
+    bonds = list(map(mol.GetBondWithIdx, range(mol.GetNumBonds())))
+    for first, second, kind in zip(
+        map(Chem.Bond.GetBeginAtomIdx, bonds),
+        map(Chem.Bond.GetEndAtomIdx, bonds),
+        map(Chem.Bond.GetBondTypeAsDouble, bonds),
+        strict=True,
+    ):
+        if isotopic and (element[first] == 1 or element[second] == 1):
             continue
-        order = _ORDER.get(bond.GetBondTypeAsDouble(), 1)
-        neighbours[first].append((second, order))
-        neighbours[second].append((first, order))
+        order = _ORDER.get(kind, 1)
+        arms = _ARMS[order]
+        neighbours[first].append(arms[second])
+        neighbours[second].append(arms[first])
         if order == 2 or order == 3:
             unsaturation[first] += order - 1
             unsaturation[second] += order - 1
-    kind = list(map(_token, element, aromatic, unsaturation, charge))
+    return neighbours, unsaturation, isotopic
+
+
+def _rings(
+    mol: Chem.Mol, number: int
+) -> tuple[tuple[tuple[int, ...], ...], list[tuple[int, ...]], list[int]]:
+    """Rings, those that hold each atom, and the size of the smallest of them."""
     rings = mol.GetRingInfo().AtomRings()
-    atom_rings: list[list[int]] = [[] for _ in atoms]
+    atom_rings: list[tuple[int, ...]] = [()] * number
     ring_size = [0] * number
     for position, ring in enumerate(rings):
-        size = len(ring)
+        size, alone = len(ring), (position,)
         for atom in ring:
-            atom_rings[atom].append(position)
-            if not 0 < ring_size[atom] <= size:
+            if ring_size[atom]:
+                atom_rings[atom] += alone
+                ring_size[atom] = min(ring_size[atom], size)
+            else:
+                atom_rings[atom] = alone
                 ring_size[atom] = size
-    degree = map(len, neighbours)
-    types = list(map(_type_number, zip(element, aromatic, charge, kind, hydrogens, degree, strict=True)))
+    return rings, atom_rings, ring_size
+
+
+def _stars(types: list[int], neighbours: list[list[Arm]]) -> list[Star]:
+    """Type of each atom with those of its neighbours."""
     if len(_STARS) > _MOST_STARS:
         _STARS.clear()
-    star = []
+    beside = [own << 3 for own in types]
+    found = []
     for own, around in zip(types, neighbours, strict=True):
-        made = (own, *sorted([types[other] << 3 | order for other, order in around]))
-        star.append(_STARS.setdefault(made, made))
-    return Graph(element, charge, hydrogens, aromatic, neighbours, kind, rings, atom_rings, ring_size, star)
+        arms = [beside[other] | order for other, order in around]
+        arms.sort()
+        star = (own, *arms)
+        found.append(_STARS.setdefault(star, star))
+    return found
