@@ -16,6 +16,7 @@ from dataclasses import dataclass
 from functools import cache
 from importlib.resources import as_file, files
 from itertools import chain
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -132,8 +133,7 @@ def group_of() -> dict[str, str]:
     return {row["family"]: row["group"] for row in read_table("families.csv")}
 
 
-@dataclass(frozen=True, slots=True)
-class Correction:
+class Correction(NamedTuple):
     """Correction of one site.
 
     Attributes
@@ -306,15 +306,16 @@ def corrections(graphs: Sequence[Graph], sites: Sequence[Site], values: Sequence
     list of Correction
         One for each site.
     """
-    trained = model()
+    trained, groups = model(), group_of()
     by_group: dict[str, list[int]] = {}
     around: list[Surroundings] = []
     for place, (graph, site) in enumerate(zip(graphs, sites, strict=True)):
-        by_group.setdefault(group_of()[site.row.family], []).append(place)
+        by_group.setdefault(groups[site.row.family], []).append(place)
         # sites of one molecule follow each other and share what is made of its atoms
         around.append(around[-1] if around and around[-1].graph is graph else Surroundings(graph))
     results: dict[int, Correction] = {}
     for name, places in by_group.items():
+        prior = trained.prior(name)
         for start in range(0, len(places), BLOCK):
             part = places[start : start + BLOCK]
             mean, left, explained = _block(
@@ -322,15 +323,17 @@ def corrections(graphs: Sequence[Graph], sites: Sequence[Site], values: Sequence
             )
             found = zip(part, mean.tolist(), left.tolist(), explained, strict=False)
             for place, one, variance, coordinates in found:
-                results[place] = _correction(trained, sites[place], one, variance, coordinates)
+                results[place] = _correction(trained, sites[place], prior, one, variance, coordinates)
     return [results[place] for place in range(len(sites))]
 
 
-def _correction(trained: Model, site: Site, mean: float, left: float, explained: Floats) -> Correction:
-    """Correction of one site from its mean and the variance that is left."""
-    prior = trained.prior(group_of()[site.row.family])
+def _correction(
+    trained: Model, site: Site, prior: float, mean: float, left: float, explained: Floats
+) -> Correction:
+    """Correction of one site from the prior variance of its group, its mean and the variance that is left."""
     support = "supported" if left < trained.threshold * prior else "extrapolated"
-    noise = trained.spread.get(site.site_class, trained.spread[f"all {site.kind}s"])
+    spread = trained.spread
+    noise = spread[site.site_class if site.site_class in spread else f"all {site.kind}s"]
     variance = left + noise**2
     return Correction(mean, trained.quantile[support] * math.sqrt(variance), support, variance, explained)
 

@@ -95,31 +95,33 @@ class Surroundings:
         ]
         if len(graph.atom_rings[start]) > 1:
             found.append(f"0 rings {len(graph.atom_rings[start])}")
-        distance = {start: 0}
-        path = {start: ""}
-        edge = [start]
+        reached = [0] * len(kind)  # the distance of an atom, 0 before it is met
+        reached[start] = -1
+        edge = [(start, "")]  # the shell reached last, and the path to each of its atoms
         for away in range(1, REACH + 1):
             # an atom met from several sides hangs on the one that spells first, whatever the order of the atoms
             hung: dict[int, tuple[str, int, str]] = {}
-            for inner in edge:
-                inner_kind, way = kind[inner], path[inner]
+            for inner, way in edge:
+                inner_kind = kind[inner]
                 for other, order in neighbours[inner]:
-                    known = distance.get(other)
-                    if known is None:
-                        distance[other] = away
+                    if not reached[other]:
+                        reached[other] = away
                         hung[other] = (inner_kind, order, way)
-                    elif known == away:
+                    elif reached[other] == away:
                         found.append((away, kind[other]))
                         hung[other] = min(hung[other], (inner_kind, order, way))
+            if not hung:
+                break
+            edge = []
             for other, (inner_kind, order, way) in hung.items():
-                path[other] = step = f"{way}{inner_kind}{order}"
                 other_kind = kind[other]
-                if other_kind == "C3" and away > _SATURATED_REACH:
-                    continue
-                found.append((away, labels[other], inner_kind, order))
-                if other_kind != "C3" and other_kind != "c" and away <= _PATH_REACH:
-                    found.append((away, other_kind, step))
-            edge = list(hung)
+                if away <= _PATH_REACH:
+                    way = f"{way}{inner_kind}{order}"
+                    if other_kind != "C3" and other_kind != "c":
+                        found.append((away, other_kind, way))
+                edge.append((other, way))
+                if other_kind != "C3" or away <= _SATURATED_REACH:
+                    found.append((away, labels[other], inner_kind, order))
         found += [f"0 nest {text}" for text in self._nests(start)]
         return found
 
