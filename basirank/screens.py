@@ -11,7 +11,9 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Callable, Collection, Sequence
 from dataclasses import dataclass
+from functools import reduce
 from itertools import pairwise
+from operator import or_
 from typing import Any
 
 from rdkit import Chem
@@ -75,6 +77,14 @@ def _demand(atom: Chem.Atom) -> _Demand:
     return _Demand(atom.DescribeQuery(), tuple(sorted(arms.items())))
 
 
+def _seated(arms: Sequence[int], around: Sequence[int]) -> bool:
+    """Whether each arm (a bit) finds a neighbour of its own among those that may be it."""
+    return not arms or any(
+        arms[0] & may_be and _seated(arms[1:], [*around[:place], *around[place + 1 :]])
+        for place, may_be in enumerate(around)
+    )
+
+
 class Screen:
     """Screen of a list of patterns.
 
@@ -101,21 +111,20 @@ class Screen:
         self._demands = tuple(demands)
         self._arms = tuple(dict.fromkeys(arm for demand in demands for arm, _ in demand.arms))
         # by numbers of types, neighbours and stars: what each may be
-        self._of_type: dict[int, list[tuple[int, int, list[tuple[int, int]]]]] = {}
+        self._of_type: dict[int, list[tuple[int, int, list[int]]]] = {}
         self._of_neighbour: dict[int, int] = {}
         self._known: dict[Star, tuple[int, int]] = {}
 
-    def _likely(self, star: Star) -> list[tuple[int, int, list[tuple[int, int]]]]:
-        """Demands that an atom of this type may meet: number, arms (bits), arms asked for several times."""
+    def _likely(self, star: Star) -> list[tuple[int, int, list[int]]]:
+        """Demands that an atom of this type may meet: number, arms as bits, arms one by one (as bits)."""
         likely = self._of_type.get(star[0])
         if likely is None:
             likely = self._of_type[star[0]] = []
             own, _ = star_parts(star)
             for number, demand in enumerate(self._demands):
                 if _may(demand.atom, own, _ATOM_TESTS):
-                    arms = [(self._arms.index(arm), times) for arm, times in demand.arms]
-                    once = sum(1 << arm for arm, _ in arms)
-                    likely.append((number, once, [(arm, times) for arm, times in arms if times > 1]))
+                    arms = [1 << self._arms.index(arm) for arm, times in demand.arms for _ in range(times)]
+                    likely.append((number, reduce(or_, arms, 0), arms))
         return likely
 
     def _arms_met(self, neighbour: int) -> int:
@@ -133,14 +142,10 @@ class Screen:
     def _look_up(self, star: Star) -> tuple[int, int]:
         """Demands that an atom of this star may meet, and patterns of which it may be a centre, as bits."""
         around = [self._arms_met(neighbour) for neighbour in star[1:]]
-        union = 0
-        for arms in around:
-            union |= arms
+        union = reduce(or_, around, 0)
         met = centre = 0
-        for number, once, several in self._likely(star):
-            if once & union != once:
-                continue
-            if all(sum(arms >> arm & 1 for arms in around) >= times for arm, times in several):
+        for number, all_arms, arms in self._likely(star):
+            if all_arms & union == all_arms and _seated(arms, around):
                 met |= 1 << number
                 centre |= self._of_centre.get(number, 0)
         if len(self._known) >= _MOST_REMEMBERED:

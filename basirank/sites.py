@@ -34,8 +34,9 @@ class SiteClass:
         "base", "acid" or "none" (a nitrogen that takes no proton).
     name, family : str
         The class, and the family whose reaction constants it shares.
-    needs : frozenset of str
-        Kinds of atom (`Graph.kind`) that the molecule must have; the cheap test before the SMARTS.
+    needs : frozenset of str and int
+        Kinds of atom (`Graph.kind`) and sizes of ring (`3` in the table) that the molecule must have; the cheap test
+        before the SMARTS.
     parent : float
         Constant of the unsubstituted parent [-].
     sd : float
@@ -47,7 +48,7 @@ class SiteClass:
     kind: str
     name: str
     family: str
-    needs: frozenset[str]
+    needs: frozenset[str | int]
     pattern: Chem.Mol
     roles: tuple[tuple[int, int], ...]
     parent: float
@@ -106,7 +107,7 @@ def site_classes() -> tuple[SiteClass, ...]:
                 kind=row["kind"],
                 name=row["name"],
                 family=row["family"],
-                needs=frozenset(row["needs"].split()),
+                needs=frozenset(int(one) if one.isdigit() else one for one in row["needs"].split()),
                 pattern=pattern,
                 roles=roles,
                 parent=float(row["parent"] or "nan"),
@@ -129,9 +130,9 @@ def _screen() -> Screen:
 
 def _shortlist(graph: Graph) -> Shortlist:
     """Rows that may match, their cheap needs met too."""
-    rows, kinds = site_classes(), set(graph.kind)
+    rows, there = site_classes(), {*graph.kind, *graph.ring_size}
     places, centres = _screen().shortlist(graph)
-    return [(place, rows[place]) for place in places if rows[place].needs <= kinds], centres
+    return [(place, rows[place]) for place in places if rows[place].needs <= there], centres
 
 
 def _matches(mol: Chem.Mol, row: SiteClass, position: Sequence[int]) -> Sequence[tuple[int, ...]]:
