@@ -63,7 +63,8 @@ def scales() -> dict[str, float]:
 
 def _small_ring(graph: Graph, atom: int) -> int:
     """Ring size that a spelling shows: three or four, at a saturated atom."""
-    return graph.ring_size[atom] if graph.ring_size[atom] < 5 and graph.kind[atom].endswith("3") else 0
+    size = graph.ring_size[atom]
+    return size if 0 < size < 5 and graph.kind[atom].endswith("3") else 0
 
 
 def spell(graph: Graph, atom: int, origin: int, order: int, depth: int) -> str:
@@ -221,7 +222,9 @@ def _spelled_further() -> tuple[frozenset[str], ...]:
     return tuple(map(frozenset, further))
 
 
-Near = tuple[Star, int, int, tuple[tuple[int, Star, int], ...]]
+Arms = tuple[tuple[int, Star, int], ...]
+Near = tuple[Star, int, int, Arms, tuple[Arms, ...]]
+"""Star of the first atom, the bond into it, its small ring; the same of the atoms one and two bonds on."""
 
 _NEAR: dict[Near, tuple[Group | None, int]] = {}
 """By what lies near, the row of the table so far and the depth from which deeper rows may follow (0: none).
@@ -247,22 +250,33 @@ def _lookup(graph: Graph, atom: int, origin: int, order: int) -> Group:
     Spelled from the shallow end: few groups have rows deeper than two or three bonds, and so far the answer
     is remembered by the stars of the atoms (which decide the spelling).
     """
-    star = graph.star
-    way_in = star[origin][0] << 3 | order
-    near: Near = (star[atom], way_in, _small_ring(graph, atom), ())
-    answer = _NEAR.get(near)
-    if answer is None:
-        answer = _remember(near, _search(graph, atom, origin, order, 2))
+    star = graph.star[atom]
+    way_in, ring = graph.star[origin][0] << 3 | order, _small_ring(graph, atom)
+    near: Near = (star, way_in, ring, (), ())
+    answer = _NEAR.get(near) or _remember(near, _search(graph, atom, origin, order, 2))
     if answer[1]:
-        beyond = [(o, other) for other, o in graph.neighbours[atom] if other != origin]
-        around = [(o, star[other], _small_ring(graph, other)) for o, other in beyond]
-        near = (star[atom], way_in, near[2], tuple(around))
-        answer = _NEAR.get(near)
-        if answer is None:
-            answer = _remember(near, _search(graph, atom, origin, order, 3))
+        arms = _arms(graph, atom, origin)
+        near = (star, way_in, ring, arms, ())
+        answer = _NEAR.get(near) or _remember(near, _search(graph, atom, origin, order, 3))
         if answer[1]:
-            answer = _search(graph, atom, origin, order, len(group_table()))
+            beyond = [other for other, _ in graph.neighbours[atom] if other != origin]
+            near = (star, way_in, ring, arms, tuple([_arms(graph, other, atom) for other in beyond]))
+            answer = _NEAR.get(near) or _remember(near, _search(graph, atom, origin, order, 4))
+            if answer[1]:
+                answer = _search(graph, atom, origin, order, len(group_table()))
     return answer[0] if answer[0] is not None else _estimate(graph, atom, origin, order)
+
+
+def _arms(graph: Graph, atom: int, origin: int) -> Arms:
+    """Bond, star and small ring of each neighbour but the one that the walk came from."""
+    star = graph.star
+    return tuple(
+        [
+            (o, star[other], _small_ring(graph, other))
+            for other, o in graph.neighbours[atom]
+            if other != origin
+        ]
+    )
 
 
 def _remember(near: Near, answer: tuple[Group | None, int]) -> tuple[Group | None, int]:
