@@ -24,7 +24,8 @@ from basirank.readers import open_table
 from basirank.request import PLAIN
 
 CHUNK = 10
-LONGEST = 0.5  # seconds until a run is killed
+FIRST = (0.35, 0.35)  # moments of the first kills, as a share of a whole run
+LATER = 0.5  # longest share until a later run is killed
 
 
 def one_run(source: str, target: str, say: Callable[[str], None]) -> None:
@@ -41,20 +42,34 @@ def tell(pipe: int, message: str) -> None:
     os.write(pipe, message.encode())
 
 
+def time_of_one_run(source: str, target: str) -> float:
+    """Seconds of a run that is left alone; what it wrote is taken away."""
+    start = time.monotonic()
+    child = os.fork()
+    if not child:
+        one_run(source, target, lambda message: None)
+        os._exit(0)
+    os.waitpid(child, 0)
+    os.unlink(target)
+    return time.monotonic() - start
+
+
 def main() -> None:
     """Kill and run again until a run ends by itself."""
     source, target, seed = sys.argv[1:]
     moments = random.Random(int(seed))
     annotate(["CCN"])
+    whole = time_of_one_run(source, f"timed.{target}")
     killed = resumed = 0
     while True:
+        share = FIRST[killed] if killed < len(FIRST) else moments.uniform(0.0, LATER)
         reading, writing = os.pipe()
         child = os.fork()
         if not child:
             one_run(source, target, partial(tell, writing))
             os._exit(0)
         os.close(writing)
-        time.sleep(moments.uniform(0.0, LONGEST))
+        time.sleep(share * whole)
         ended, _ = os.waitpid(child, os.WNOHANG)
         if not ended:
             os.kill(child, signal.SIGKILL)

@@ -194,7 +194,7 @@ def test_killed_at_any_moment_it_goes_on_to_the_same_bytes(folder, ending):
         check=True,
     )
     killed, resumed = map(int, done.stdout.split())
-    assert killed >= 2 and resumed >= 1
+    assert killed >= 1 and resumed >= 1
     expected = subprocess.run(
         [sys.executable, "-c",
          "import sys, killed_runs as k; k.one_run(sys.argv[1], sys.argv[2], print)",
