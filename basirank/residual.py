@@ -31,7 +31,7 @@ __all__ = [
 ]  # fmt: skip
 
 BLOCK = 64
-"""Sites in one matrix product; rows are padded to it so that a result doesn't depend on the batch it came in."""
+"""Sites in one matrix product at most."""
 
 _VECTOR = 8
 """Elements that a processor handles together at most (64-bit numbers)."""
@@ -46,7 +46,10 @@ def exact_steps(values: Floats, bits: int) -> Floats:
     A product of two such matrices has an exact result in double precision as long as the bits of a sum stay below 53,
     whatever the order of summation: so a site's numbers don't depend on the batch it came in.
     """
-    return np.round(values * 2.0**bits) / 2.0**bits
+    steps: Floats = values * 2.0**bits
+    np.rint(steps, out=steps)
+    steps *= 2.0**-bits
+    return steps
 
 
 COVARIANCE_BITS = 18
@@ -162,6 +165,10 @@ _MOST_READ = 50_000
 """Pieces that a group remembers at most."""
 
 
+Shown = tuple[list[int], float]
+"""Rows of the features that a site shows to its group, and the weight of all its features."""
+
+
 @dataclass(frozen=True, slots=True)
 class Group:
     """Trained arrays of one group: its basis sites, their weights and the directions that explain variance.
@@ -193,7 +200,7 @@ class Group:
         self.read[piece] = found = (len(features) * feature_weight(self.fade, int(features[0][0])), known)
         return found
 
-    def rows(self, pieces: Sequence[Piece]) -> tuple[list[int], float]:
+    def rows(self, pieces: Sequence[Piece]) -> Shown:
         """Rows of the features that pieces show, copies included, and the weight of all features."""
         read, copies = self.read, self.copies
         found = [read.get(piece) or self.look_up(piece) for piece in pieces]
@@ -308,18 +315,23 @@ def corrections(graphs: Sequence[Graph], sites: Sequence[Site], values: Sequence
     """
     trained, groups = model(), group_of()
     by_group: dict[str, list[int]] = {}
-    around: list[Surroundings] = []
+    shown: list[Shown] = []
+    around: Surroundings | None = None
     for place, (graph, site) in enumerate(zip(graphs, sites, strict=True)):
-        by_group.setdefault(groups[site.row.family], []).append(place)
+        name = groups[site.row.family]
+        by_group.setdefault(name, []).append(place)
         # sites of one molecule follow each other and share what is made of its atoms
-        around.append(around[-1] if around and around[-1].graph is graph else Surroundings(graph))
+        if around is None or around.graph is not graph:
+            around = Surroundings(graph)
+        group = trained.groups.get(name)
+        shown.append(group.rows(around.pieces(site.atom)) if group is not None else ([], 0.0))
     results: dict[int, Correction] = {}
     for name, places in by_group.items():
         prior = trained.prior(name)
         for start in range(0, len(places), BLOCK):
             part = places[start : start + BLOCK]
             mean, left, explained = _block(
-                trained, name, [around[p] for p in part], [sites[p] for p in part], [values[p] for p in part]
+                trained, name, [shown[p] for p in part], [sites[p] for p in part], [values[p] for p in part]
             )
             found = zip(part, mean.tolist(), left.tolist(), explained, strict=False)
             for place, one, variance, coordinates in found:
@@ -339,14 +351,14 @@ def _correction(
 
 
 def _block(
-    trained: Model, name: str, around: Sequence[Surroundings], sites: Sequence[Site], values: Sequence[float]
+    trained: Model, name: str, shown: Sequence[Shown], sites: Sequence[Site], values: Sequence[float]
 ) -> tuple[Floats, Floats, Floats]:
     """Mean, remaining variance and explained coordinates of at most `BLOCK` sites of one group, and the padding."""
     prior = trained.prior(name)
     group = trained.groups.get(name)
     if group is None:
         return np.zeros(len(sites)), np.full(len(sites), prior), np.zeros((len(sites), 1))
-    covariance = _covariances(trained, group, around, sites, values)
+    covariance = _covariances(trained, group, shown, sites, values)
     mean = covariance @ group.weights
     explained = exact_steps(covariance @ group.directions, COVARIANCE_BITS)
     return mean, np.clip(prior - (explained**2).sum(axis=1), 1e-3 * prior, prior), explained
@@ -355,31 +367,30 @@ def _block(
 def _covariances(
     trained: Model,
     group: Group,
-    around: Sequence[Surroundings],
+    shown: Sequence[Shown],
     sites: Sequence[Site],
     values: Sequence[float],
 ) -> Floats:
-    """Covariances of at most `BLOCK` sites of one group with its basis sites, padded to `BLOCK` rows."""
+    """Covariances of at most `BLOCK` sites of one group with its basis sites, and some rows of padding."""
     # whole vectors of the processor, so that no element is computed by other means for standing last
     filled = -(-len(sites) // _VECTOR) * _VECTOR
     overlap = np.zeros((filled, len(group.total)), dtype=np.float32)
     total, value = np.ones(filled), np.zeros(filled)
     site_class, family = np.full(filled, -1), np.full(filled, -1)
-    for row, (surroundings, site) in enumerate(zip(around, sites, strict=True)):
-        rows, total[row] = group.rows(surroundings.pieces(site.atom))
+    for row, ((rows, total[row]), site) in enumerate(zip(shown, sites, strict=True)):
         if rows:
             np.add.reduce(group.features.take(rows, axis=0), axis=0, out=overlap[row])
         site_class[row] = trained.classes.get(site.site_class, -1)
         family[row] = trained.families.get(site.row.family, -1)
     value[: len(values)] = values
-    covariance = np.zeros((BLOCK, len(group.total)))
-    covariance[:filled] = group.scale * trained.kernel.covariance(
+    covariance = trained.kernel.covariance(
         overlap.astype(np.float64),
         (total, group.total),
         (value, group.value),
         (site_class, group.site_class),
         (family, group.family),
     )
+    covariance *= group.scale
     return exact_steps(covariance, COVARIANCE_BITS)
 
 
@@ -404,5 +415,6 @@ def covariances(graph: Graph, site: Site, value: float) -> Floats:
     group = trained.groups.get(group_of()[site.row.family])
     if group is None:
         return np.zeros(0)
-    found: Floats = _covariances(trained, group, [Surroundings(graph)], [site], [value])[0]
+    shown = group.rows(Surroundings(graph).pieces(site.atom))
+    found: Floats = _covariances(trained, group, [shown], [site], [value])[0]
     return found
