@@ -174,32 +174,33 @@ def _centre(site: Site) -> int:
     return site.atom
 
 
-def _paths_from(
-    graph: Graph, start: int, ends: Collection[int]
-) -> tuple[dict[int, int], dict[int, int], dict[int, int]]:
-    """Shortest distance, number of shortest paths and most conjugated bonds on one, out to the last end."""
-    distance, count, conjugated = {start: 0}, {start: 1}, {start: 0}
+def _paths_from(graph: Graph, start: int, ends: Collection[int]) -> tuple[list[int], list[int], list[int]]:
+    """Shortest distance, number of shortest paths and most conjugated bonds on one, out to the last end.
+
+    For each atom; a distance of -1 marks those that lie farther away than all ends.
+    """
+    neighbours = graph.neighbours
+    unsaturated = [kind != "C3" for kind in graph.kind]
+    distance, count, conjugated = [-1] * len(unsaturated), [0] * len(unsaturated), [0] * len(unsaturated)
+    distance[start], count[start] = 0, 1
     edge = [start]
-    kind = graph.kind
     away = 0
-    left = set(ends)
-    while edge and not left <= distance.keys():
+    while edge and min([distance[end] for end in ends]) < 0:
         away += 1
         following: list[int] = []
         for inner in edge:
-            saturated = kind[inner] == "C3"
-            number, along = count[inner], conjugated[inner]
-            for other, _ in graph.neighbours[inner]:
-                known = distance.get(other)
-                if known is None:
+            conjugable, number, along = unsaturated[inner], count[inner], conjugated[inner]
+            for other, _ in neighbours[inner]:
+                if distance[other] < 0:
                     distance[other] = away
                     count[other] = number
-                    conjugated[other] = along if saturated or kind[other] == "C3" else along + 1
+                    conjugated[other] = along + 1 if conjugable and unsaturated[other] else along
                     following.append(other)
-                elif known == away:
+                elif distance[other] == away:
                     count[other] += number
-                    step = along if saturated or kind[other] == "C3" else along + 1
-                    conjugated[other] = max(conjugated[other], step)
+                    step = along + 1 if conjugable and unsaturated[other] else along
+                    if step > conjugated[other]:
+                        conjugated[other] = step
         edge = following
     return distance, count, conjugated
 
