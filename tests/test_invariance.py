@@ -15,8 +15,10 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from rdkit import Chem
 
+from basirank import graph, groups
 from basirank.annotation import annotate
 from basirank.prediction import Prediction, predict
+from basirank.residual import model
 
 settings.register_profile("chemistry", derandomize=True, deadline=None, max_examples=25)
 CHEMISTRY = settings.get_profile("chemistry")
@@ -142,6 +144,26 @@ def test_the_numbered_atom_moves_with_the_drawing(seed):
 
 TWO_DRAWN_NITROGENS = {"metformin", "arginine", "benzamidine"}
 """Amidines and guanidines: which of the nitrogens of one N-C-N unit is named follows the drawing."""
+
+
+# the company of a list, and what was read before it
+
+
+def test_a_compound_alone_and_unprepared_has_the_bits_it_has_in_a_list():
+    """What is remembered of atoms, groups and surroundings is a saving of time and nothing else."""
+    for name, in_list in known().items():
+        for memory in (
+            graph._KNOWN,
+            graph._STARS,
+            groups._NEAR,
+            *(one.read for one in model().groups.values()),
+        ):
+            memory.clear()
+        (alone,) = predict([DRUGS[name]], ph=PH)
+        assert [(one.value, one.half_width) for one in alone.estimates] == [
+            (one.value, one.half_width) for one in in_list.estimates
+        ], name
+        assert alone.equilibrium == in_list.equilibrium, name
 
 
 # salt form and drawn charge
