@@ -26,6 +26,7 @@ from basirank.request import PLAIN
 CHUNK = 10
 FIRST = (0.35, 0.35)  # moments of the first kills, as a share of a whole run
 LATER = 0.5  # longest share until a later run is killed
+GROWTH = 1.1  # of that share with each kill: a run spends some time on its start, and must get beyond it in the end
 
 
 def one_run(source: str, target: str, say: Callable[[str], None]) -> None:
@@ -62,7 +63,8 @@ def main() -> None:
     whole = time_of_one_run(source, f"timed.{target}")
     killed = resumed = 0
     while True:
-        share = FIRST[killed] if killed < len(FIRST) else moments.uniform(0.0, LATER)
+        longest = LATER * GROWTH**killed
+        share = FIRST[killed] if killed < len(FIRST) else moments.uniform(0.0, longest)
         reading, writing = os.pipe()
         child = os.fork()
         if not child:
