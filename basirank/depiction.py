@@ -120,7 +120,7 @@ def measured_picture(smiles: str, kind: str, value: float) -> Picture | None:
     )
     if drawing is None or not sites:
         return None
-    spots = [(sites[0], "pKaH" if kind == "pkah" else "pKa", f"{value:.2f}", False)]
+    spots = [(sites[0], "pKa" if kind == "pka" else "pKaH", f"{value:.2f}", False)]
     return _marked(drawing, spots, {n: n for n in range(len(drawing.atoms))})
 
 

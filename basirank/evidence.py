@@ -23,6 +23,8 @@ PULL_STEP = 2.0**-11
 """Steps in which the pulls are stored."""
 LEAST_WEIGHT = 0.02
 """A measured value that moves the correction by less than this share of its residual isn't named."""
+QUANTITIES = {"pkah": "pKaH", "pka": "pKa", "ratio": "log ratio of protomers"}
+"""What a measured value is, by its kind."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,10 +35,11 @@ class Analogue:
     ----------
     name, smiles : str
         The compound, without a name where the source's table gives none; atom map 1 marks the site that was measured.
-    kind : {"pkah", "pka"}
-        What was measured.
+    kind : {"pkah", "pka", "ratio"}
+        What was measured: a constant, or the ratio of two protomers (atom map 1 holds the proton in the form above, 2
+        in that below).
     value : float
-        Measured constant [-].
+        Measured constant, or decadic logarithm of the ratio [-].
     source : str
         Publication, as in `data/SOURCES.md`.
     weight : float
@@ -52,6 +55,11 @@ class Analogue:
     source: str
     weight: float
     pull: float
+
+    @property
+    def quantity(self) -> str:
+        """What was measured, in words."""
+        return QUANTITIES[self.kind]
 
 
 @cache

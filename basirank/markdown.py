@@ -119,7 +119,7 @@ def _site(site: SiteLine) -> list[str]:
             [
                 plain(one.name),
                 code(one.smiles),
-                f"{one.value:.2f}",
+                f"{one.quantity} {one.value:.2f}",
                 f"{one.weight:.2f}",
                 f"{one.pull:+z.2f}",
                 plain(one.source),

@@ -302,7 +302,7 @@ class _Analogues:
                 {
                     "name": one.name,
                     "smiles": one.smiles,
-                    "quantity": "pKaH" if one.kind == "pkah" else "pKa",
+                    "quantity": one.quantity,
                     "value": round(one.value, 2),
                     "source": one.source,
                     "picture": picture and _picture(picture),

@@ -81,8 +81,7 @@ def _evidence_text(evidence: tuple[Analogue, ...]) -> list[str]:
         return []
     lines = ["  carried most by these measured values, each with its weight and what it adds:"]
     for one in evidence:
-        constant = "pKaH" if one.kind == "pkah" else "pKa"
-        text = f"    {f'{one.name}, ' if one.name else ''}{one.smiles}: {constant} {one.value:.2f}"
+        text = f"    {f'{one.name}, ' if one.name else ''}{one.smiles}: {one.quantity} {one.value:.2f}"
         text += f"  ({one.weight:.2f}, {one.pull:+z.2f})  {one.source}"
         lines += textwrap.wrap(text, TEXT_WIDTH, subsequent_indent=" " * 6, break_long_words=False)
     return lines

@@ -18,7 +18,7 @@ from statistics import median
 
 from compounds import held_out, only_scores, skeleton
 from ladder import along_ladder
-from line_fit import Row, rows_of
+from measured_rows import Row, rows_of
 from rdkit import Chem, rdBase
 
 from basirank.prediction import Prediction, predict

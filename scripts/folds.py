@@ -9,7 +9,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from line_fit import Fit, Row
+from line_fit import Fit
+from measured_rows import Row
 from rdkit import Chem
 from rdkit.Chem.Scaffolds import MurckoScaffold
 from residual_fit import SiteTable, sparse_fit, sparse_prediction

@@ -12,7 +12,7 @@ from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 
 import numpy as np
-from line_fit import Row
+from measured_rows import Row
 from residual_fit import (
     CLIP,
     SiteTable,

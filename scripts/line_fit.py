@@ -7,122 +7,25 @@ A Bayesian linear regression (Gauss-Newton around the equilibrium) with the publ
 
 from __future__ import annotations
 
-import csv
-import sys
 from collections import defaultdict
-from collections.abc import Iterable
 from dataclasses import dataclass
-from pathlib import Path
 from typing import TYPE_CHECKING
 
 import numpy as np
+from measured_rows import Row
 
-from basirank.binding import binding_polynomial
-from basirank.conditions import (
-    IONIC_STRENGTH_RANGE,
-    STANDARD_TEMPERATURE,
-    TEMPERATURE_RANGE,
-    to_standard,
-)
+from basirank.binding import LN10, binding_polynomial, log_weights, microstates
 from basirank.increments import coefficients
-from basirank.interactions import Law, Paths, coupling_matrix, find_paths, prior_law
-from basirank.prediction import Lines, site_lines
+from basirank.interactions import Law, Paths, coupling_matrix, prior_law
 from basirank.sites import site_classes
-from basirank.structures import Refusal, read_parent
 
 if TYPE_CHECKING:
     from residual_fit import SiteTable
 
-QUALITY_ERROR = {"reliable": 0.05, "approximate": 0.10, "uncertain": 0.20, "": 0.20}
-"""Error of a measured value by the compilation's own judgement [pK units] (common practice)."""
 MODEL_ERROR = 0.45
 """Error of a linear free-energy line itself [pK units]: what is left for well-behaved series."""
-MOST_SITES = 12
-"""Molecules with more sites are left out of the fit."""
 ROBUST_SCALE = 2.5
 """Residuals past this many standard deviations lose weight (Student-like), so that odd rows don't steer."""
-
-
-@dataclass(slots=True)
-class Row:
-    """One measured value with the sites of its molecule."""
-
-    record: dict[str, str]
-    group: str
-    value: float
-    error: float
-    index: int
-    keys: list[list[tuple[tuple[str, str, str], float]]]
-    lines: Lines
-    paths: Paths
-    exclusive: np.ndarray
-    acid: np.ndarray
-    main_site: int = 0
-
-
-def load(path: Path) -> list[Row]:
-    """Read a table in the columns of `data/measured.csv`."""
-    with path.open(encoding="utf-8", newline="") as handle:
-        return rows_of(csv.DictReader(handle))
-
-
-def rows_of(records: Iterable[dict[str, str]]) -> list[Row]:
-    """Find the macroscopic step that each value belongs to."""
-    rows: list[Row] = []
-    parents: dict[str, tuple[str, Lines, Paths, np.ndarray] | None] = {}
-    for record in records:
-        smiles = record["smiles"]
-        if smiles not in parents:
-            try:
-                parent = read_parent(smiles)
-            except Refusal as reason:
-                print(f"skipped {smiles}: {reason}", file=sys.stderr)
-                parents[smiles] = None
-                continue
-            lines = site_lines(parent)
-            paths, exclusive = find_paths(lines.graph, lines.sites)
-            none = np.zeros((len(lines.sites), len(lines.sites)), dtype=bool)
-            parents[smiles] = (parent.smiles, lines, paths, none if exclusive is None else exclusive)
-        known = parents[smiles]
-        if known is None:
-            continue
-        group, lines, paths, exclusive = known
-        acid = np.array([site.kind == "acid" for site in lines.sites], dtype=bool)
-        index = int(acid.sum()) + int(record["acid_charge"]) - 1
-        if not 0 <= index < len(acid) or len(acid) > MOST_SITES:
-            print(f"skipped {record['name']}, {smiles}: no such step", file=sys.stderr)
-            continue
-        value = at_standard(record, sum(lines.graph.charge))
-        keys = [[(term.key, term.descriptor) for term in terms] for terms in lines.terms]
-        error = QUALITY_ERROR.get(record["quality"].lower(), 0.3)
-        rows.append(Row(record, group, value, error, index, keys, lines, paths, exclusive, acid))
-    return rows
-
-
-def at_standard(record: dict[str, str], fixed_charge: int) -> float:
-    """Measured value brought to 25 C and ionic strength 0; what isn't stated is taken as these.
-
-    A value at a stated ionic strength is a concentration constant unless its note says mixed: such are those of the
-    polyamines and chelators (1,2-diaminoethane 7.08 at 0.1 mol/L against 6.85, Martell and Smith, memory). A value
-    at a temperature or an ionic strength out of reach of the laws stays as it is in that respect.
-    """
-    family = next(row.family for row in site_classes() if row.name == record["class"] and row.kind != "none")
-    temperature = float(record["temperature_c"] or STANDARD_TEMPERATURE)
-    strength = float(record["ionic_strength"] or 0.0)
-    return float(
-        to_standard(
-            float(record["value"]),
-            family=family,
-            acid_charge=int(record["acid_charge"]) + fixed_charge,
-            temperature=temperature if _within(temperature, TEMPERATURE_RANGE) else STANDARD_TEMPERATURE,
-            ionic_strength=strength if _within(strength, IONIC_STRENGTH_RANGE) else 0.0,
-            kind="mixed" if "mixed constant" in record["note"] else "concentration",
-        )
-    )
-
-
-def _within(value: float, ends: tuple[float, float]) -> bool:
-    return ends[0] <= value <= ends[1]
 
 
 def priors() -> dict[tuple[str, str, str], tuple[float, float, str]]:
@@ -155,6 +58,32 @@ class Through:
     jacobian: np.ndarray
     gains: list[np.ndarray]
     strain: np.ndarray
+
+
+def balance(row: Row, pk: np.ndarray, coupling: np.ndarray) -> tuple[float, np.ndarray]:
+    """Logarithm of the ratio of two protomers of a row, and its derivatives by the intrinsic constants.
+
+    All microstates of the row's number of protons count that hold the proton on the first site of the pair and not
+    on the second, against those of the reverse.
+    """
+    assert row.pair is not None
+    table = microstates(len(pk))
+    weights = log_weights(pk[None], row.acid[None], coupling[None], row.exclusive[None])[0]
+    sums, means = [], []
+    for holder, other in (row.pair, row.pair[::-1]):
+        members = np.flatnonzero((table.count == row.index) & table.protons[holder] & ~table.protons[other])
+        top = weights[members].max()
+        share = np.exp(LN10 * (weights[members] - top))
+        sums.append(float(top + np.log10(share.sum())))
+        means.append(table.protons[:, members] @ share / share.sum())
+    return sums[0] - sums[1], means[0] - means[1]
+
+
+def _moved(theta: np.ndarray, parameter: int) -> np.ndarray:
+    """Parameters with one of them a step on."""
+    moved = theta.copy()
+    moved[parameter] += STEP
+    return moved
 
 
 class Fit:
@@ -236,7 +165,18 @@ class Fit:
         rule = self.law(theta)
         by_size: dict[int, list[int]] = defaultdict(list)
         for place, member in enumerate(members):
-            by_size[len(self.rows[member].keys)].append(place)
+            row = self.rows[member]
+            if row.pair is None:
+                by_size[len(row.keys)].append(place)
+                continue
+            design = self.design[member]
+            pk = design @ theta[: self.lines]
+            predicted[place], gains[place] = balance(row, pk, coupling_matrix(row.paths, rule))
+            jacobian[place, : self.lines] = gains[place] @ design
+            strain[place] = float(gains[place] @ pk) - predicted[place]
+            for parameter in range(self.lines, len(theta)) if by_law else ():
+                coupling = coupling_matrix(row.paths, self.law(_moved(theta, parameter)))
+                jacobian[place, parameter] = (balance(row, pk, coupling)[0] - predicted[place]) / STEP
         for n, places in by_size.items():
             for start in range(0, len(places), 64):
                 part = places[start : start + 64]
@@ -255,9 +195,7 @@ class Fit:
                     gains[place] = gain[k]
                     jacobian[place, : self.lines] = gain[k] @ self.design[members[place]]
                 for parameter in range(self.lines, len(theta)) if n > 1 and by_law else ():
-                    moved = theta.copy()
-                    moved[parameter] += STEP
-                    coupling = coupling_matrix(stacked, self.law(moved))
+                    coupling = coupling_matrix(stacked, self.law(_moved(theta, parameter)))
                     other = binding_polynomial(pk, acid, coupling, exclusive).constants[step, index]
                     jacobian[part, parameter] = (other - predicted[part]) / STEP
         return Through(predicted, jacobian, gains, strain)

@@ -10,7 +10,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from line_fit import Row
+from measured_rows import Row
 from scipy import sparse
 
 from basirank.residual import (

@@ -16,7 +16,7 @@ sys.path.insert(0, str(Path(__file__).resolve().parent.parent / "scripts"))
 
 from compounds import ROOT, unmarked
 from extra_tables import ExtraTable, TableError, read_iupac
-from line_fit import rows_of
+from measured_rows import rows_of
 
 COLUMNS = (
     "unique_ID", "SMILES", "InChI", "pka_type", "pka_value", "T", "remarks", "method", "assessment", "ref",

@@ -15,7 +15,7 @@ sys.path.insert(0, str(Path(__file__).resolve().parent.parent / "scripts"))
 
 from compounds import ROOT
 from folds import by_compound, by_scaffold, carbon_skeleton, scaffold
-from line_fit import Row, load
+from measured_rows import Row, load
 
 
 @pytest.fixture(scope="module")

@@ -24,6 +24,16 @@ SHARES = [
     ("OC(=O)c1cccnc1", 0, "[O-]C(=O)c1ccc[nH+]c1", 0.91),
     # picolinic acid, about 15: Green and Tong 1956 (memory)
     ("OC(=O)c1ccccn1", 0, "[O-]C(=O)c1cccc[nH+]1", 0.94),
+    # isonicotinic acid, about 25: Green and Tong 1956 (memory)
+    ("OC(=O)c1ccncc1", 0, "[O-]C(=O)c1cc[nH+]cc1", 0.96),
+    # 3-hydroxypyridine, 1.17: Metzler and Snell 1955 (memory)
+    ("Oc1cccnc1", 0, "[O-]c1ccc[nH+]c1", 0.54),
+    # pyridoxine, about 7: Metzler et al. 1973 (memory)
+    ("Cc1ncc(CO)c(CO)c1O", 0, "Cc1[nH+]cc(CO)c(CO)c1[O-]", 0.88),
+    # 3-aminobenzoic acid, 2.4: Serjeant 1969 (memory)
+    ("Nc1cccc(C(=O)O)c1", 0, "[NH3+]c1cccc(C(=O)[O-])c1", 0.70),
+    # tyrosine, the phenol gives its proton in a third: Martin et al. 1958 (memory)
+    ("NC(Cc1ccc(O)cc1)C(=O)O", -1, "[NH3+]C(Cc1ccc([O-])cc1)C(=O)[O-]", 0.31),
     # niflumic acid, log Kz 1.2: Takacs-Novak et al. (memory)
     ("OC(=O)c1cccnc1Nc1cccc(C(F)(F)F)c1", 0, "[O-]C(=O)c1ccc[nH+]c1Nc1cccc(C(F)(F)F)c1", 0.94),
     # norfloxacin, the zwitterion outweighs the neutral form: Takacs-Novak et al. 1990 (memory)
