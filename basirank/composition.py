@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cache
+from typing import TYPE_CHECKING
 
 import numpy as np
 from rdkit import Chem
@@ -19,6 +20,9 @@ from .request import STANDARD, Conditions
 from .salts import Component, components_of, split_ion_pairs
 from .structures import Refusal, read_parent
 from .tables import read_table
+
+if TYPE_CHECKING:
+    from .conditioning import LocalModel
 
 STRONG = -10.0
 """Constant that stands for an acid which gives its proton to any water [-]."""
@@ -70,7 +74,9 @@ def _inorganic() -> dict[str, tuple[str, tuple[float, ...]]]:
     return found
 
 
-def compose(structure: str | Chem.Mol, conditions: Conditions = STANDARD) -> Composition:
+def compose(
+    structure: str | Chem.Mol, conditions: Conditions = STANDARD, local: LocalModel | None = None
+) -> Composition:
     """Everything that one formula unit of a structure brings into solution.
 
     Parameters
@@ -79,6 +85,8 @@ def compose(structure: str | Chem.Mol, conditions: Conditions = STANDARD) -> Com
         Salts included; a name after the white space of a SMILES is ignored.
     conditions : Conditions
         Of the constants; those of acids without carbon keep their value of 25 C.
+    local : LocalModel, optional
+        A user's own measurements.
 
     Returns
     -------
@@ -108,7 +116,7 @@ def compose(structure: str | Chem.Mol, conditions: Conditions = STANDARD) -> Com
                 raise Refusal("a metal drawn without its charge: its ion is not known")
             fixed += drawn
         elif component.kind != "solvent":
-            solute, name = _solute(component, conditions)
+            solute, name = _solute(component, conditions, local)
             if solute is None:
                 fixed += drawn
             else:
@@ -123,10 +131,12 @@ def compose(structure: str | Chem.Mol, conditions: Conditions = STANDARD) -> Com
     return Composition(tuple(solutes), fixed, tuple(dict.fromkeys(notes)))
 
 
-def _solute(component: Component, conditions: Conditions) -> tuple[Ladder | None, str]:
+def _solute(
+    component: Component, conditions: Conditions, local: LocalModel | None
+) -> tuple[Ladder | None, str]:
     """Ladder of a component and its name; no ladder for an ion without hydrogen, which keeps its drawn charge."""
     if component.is_organic:
-        (found,) = predict([Chem.MolToSmiles(component.mol)], ph=(7.0,), conditions=conditions)
+        (found,) = predict([Chem.MolToSmiles(component.mol)], ph=(7.0,), conditions=conditions, local=local)
         if found.sites is None:
             raise Refusal(found.message)
         return ladder_of(found.sites), "" if found.parent is None else found.parent.smiles

@@ -22,6 +22,8 @@ from .request import STANDARD, Conditions, within
 if TYPE_CHECKING:
     import pandas as pd
 
+    from .conditioning import LocalModel
+
 Floats = NDArray[np.float64]
 
 CATION_BELOW, ANION_BELOW = 3.0, 4.0
@@ -139,9 +141,10 @@ def curves_of(
     *,
     log_p: float | None = None,
     conditions: Conditions = STANDARD,
+    local: LocalModel | None = None,
 ) -> list[Curve]:
     """A curve for each structure; one that cannot be computed has an empty `ph` and its reason in `message`."""
-    predictions = predict(structures, ph=(7.4,), conditions=conditions)
+    predictions = predict(structures, ph=(7.4,), conditions=conditions, local=local)
     return [
         _curve(found, name, structure if isinstance(structure, str) else "", ph, log_p)
         for found, name, structure in zip(predictions, names, structures, strict=True)
@@ -251,6 +254,7 @@ def curve(
     log_p: float | None = None,
     temperature: float = 25.0,
     ionic_strength: float = 0.0,
+    local: LocalModel | None = None,
 ) -> pd.DataFrame:
     """Share of each form, mean charge and log D of one or several compounds against pH.
 
@@ -265,6 +269,8 @@ def curve(
         1999, as in RDKit) when not given.
     temperature, ionic_strength : float
         [C], 0 to 60; [mol/L], 0 to 0.5.
+    local : LocalModel, optional
+        A user's own measurements (`condition`).
 
     Returns
     -------
@@ -286,7 +292,7 @@ def curve(
         if len(listed) != 1:
             raise ValueError(f"log P can be given for one compound, not for {len(listed)}")
     conditions = Conditions(temperature, ionic_strength)
-    found = curves_of(listed, [""] * len(listed), ph, log_p=log_p, conditions=conditions)
+    found = curves_of(listed, [""] * len(listed), ph, log_p=log_p, conditions=conditions, local=local)
     for n, one in enumerate(found):
         if not len(one.ph):
             raise ValueError(f"structure {n}: {one.message}")

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 from .explanation import Explanation, explanation_of
 from .records import Record, record, refused_record, structure_column
-from .request import STANDARD, Conditions, Request
+from .request import PLAIN, Request
 
 if TYPE_CHECKING:
     from .kinship import Standing
@@ -52,9 +52,7 @@ class Entry:
     standing: Standing | None = None
 
 
-def entries_of(
-    subjects: Sequence[Subject], ph: tuple[float, ...], conditions: Conditions = STANDARD
-) -> list[Entry]:
+def entries_of(subjects: Sequence[Subject], ph: tuple[float, ...], request: Request = PLAIN) -> list[Entry]:
     """Everything a report says of each subject, in order.
 
     Parameters
@@ -63,17 +61,23 @@ def entries_of(
         Rows of a list; one that cannot be computed becomes an entry that is `refused`.
     ph : tuple of float
         pH of the states [-], checked already.
-    conditions : Conditions
-        Temperature and ionic strength of the constants and states.
+    request : Request
+        Conditions of the constants and states, and a user's own measurements.
     """
     from .prediction import predict
 
     sound = [one for one in subjects if one.problem is None and _given(one.structure)]
     found = iter(
-        predict([one.structure for one in sound], ph=(*ph, *GRID), conditions=conditions, standings=True)
+        predict(
+            [one.structure for one in sound],
+            ph=(*ph, *GRID),
+            conditions=request.conditions,
+            standings=True,
+            local=request.local,
+        )
     )
     computed = {id(one): next(found) for one in sound}
-    return [_entry(one, computed.get(id(one)), ph, Request(conditions)) for one in subjects]
+    return [_entry(one, computed.get(id(one)), ph, request) for one in subjects]
 
 
 def _given(structure: Any) -> bool:

@@ -322,18 +322,23 @@ def _site_line(prediction: Prediction, place: int, request: Request) -> SiteLine
         estimate.half_width,
         support(estimate),
         terms,
-        _evidence(prediction, place),
+        _evidence(prediction, place, request.local),
         None
         if prediction.sites is None or request.conditions == STANDARD
         else float(prediction.sites.pk[place]),
     )
 
 
-def _evidence(prediction: Prediction, place: int) -> tuple[Analogue, ...]:
+def _evidence(prediction: Prediction, place: int, local: LocalModel | None) -> tuple[Analogue, ...]:
+    """Own measurements first, then those of the shipped table."""
     from .evidence import analogues
 
     lines = prediction.lines
-    return () if lines is None else analogues(lines.graph, lines.sites[place], lines.values[place])
+    if lines is None:
+        return ()
+    subject = lines.graph, lines.sites[place], lines.values[place]
+    own = () if local is None else local.analogues(*subject)
+    return (*own, *analogues(*subject))
 
 
 def _interactions(prediction: Prediction) -> tuple[tuple[int, int, float], ...]:

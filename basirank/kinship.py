@@ -120,6 +120,67 @@ def posterior_covariance(first: Footprint, second: Footprint) -> float:
     return scale * float(prior[0, 0]) - float(along)
 
 
+class Kindred:
+    """Many sites, for their covariances with one more at once.
+
+    Parameters
+    ----------
+    members : sequence of Footprint
+        The n sites.
+    """
+
+    def __init__(self, members: Sequence[Footprint]) -> None:
+        self.members = tuple(members)
+        by_group: dict[str, list[int]] = {}
+        for place, one in enumerate(self.members):
+            by_group.setdefault(one.group, []).append(place)
+        self._groups = {name: _Kin([self.members[place] for place in places], np.array(places))
+                        for name, places in by_group.items()}  # fmt: skip
+
+    def covariances(self, own: Footprint) -> Floats:
+        """`posterior_covariance` with each member, shape (n,) [pK units squared]."""
+        shared = np.zeros(len(self.members))
+        if own.group in self._groups:
+            kin = self._groups[own.group]
+            shared[kin.places] = kin.covariances(own)
+        return shared
+
+
+class _Kin:
+    """The members of one group as arrays."""
+
+    def __init__(self, members: Sequence[Footprint], places: NDArray[np.int64]) -> None:
+        self.places = places
+        self.total, self.value, self.site_class, self.family = (
+            np.array([getattr(one, name) for one in members])
+            for name in ("total", "value", "site_class", "family")
+        )
+        self.explained = np.array([one.explained for one in members], dtype=np.float64)
+        codes = sorted({code for one in members for code in one.features.tolist()})
+        self.row = {code: number for number, code in enumerate(codes)}
+        self.shown = np.zeros((len(codes), len(members)))
+        for column, one in enumerate(members):
+            self.shown[[self.row[code] for code in one.features.tolist()], column] = 1.0
+
+    def covariances(self, own: Footprint) -> Floats:
+        common = [(self.row[code], weight) for code, weight in
+                  zip(own.features.tolist(), own.weights.tolist(), strict=True) if code in self.row]  # fmt: skip
+        rows = [row for row, _ in common]
+        weights = np.array([weight for _, weight in common])
+        # sums along an axis, not a matrix product: the same bits whatever the processor makes of the shape
+        overlaps = (weights[:, None] * self.shown[rows]).sum(axis=0) if common else np.zeros(len(self.places))
+        trained = model()
+        prior = trained.kernel.covariance(
+            overlaps[None],
+            (np.array([own.total]), self.total),
+            (np.array([own.value]), self.value),
+            (np.array([own.site_class]), self.site_class),
+            (np.array([own.family]), self.family),
+        )[0]
+        scale = trained.groups[own.group].scale if own.group in trained.groups else 1.0
+        return scale * prior - (self.explained * own.explained.astype(np.float64)).sum(axis=1)
+
+
 @dataclass(frozen=True, slots=True)
 class Standing:
     """First constant of one compound as the order of a list sees it: value [-], half of its 90 % interval, carrier."""

@@ -34,6 +34,10 @@ LOWEST, HIGHEST = -5.0, 16.0
 
 CORRECTION = "correction from measured neighbours"
 """Name of the term that the regression adds to a line."""
+OWN_CORRECTION = "correction from own measurements"
+"""Name of the term that a local model adds to it."""
+OWN_NOTE = "own measurements taken into account"
+"""What the message says of a compound that a local model moves."""
 
 _MARGIN = 4.0
 """A site whose intrinsic constant lies further outside can't come back by interaction: it is left out."""
@@ -149,8 +153,13 @@ def estimates_of(lines: Lines, found: Sequence[Correction]) -> tuple[Estimate, .
     """Intrinsic constants of one parent: lines plus the corrections from measured neighbours."""
     estimates = []
     for site, terms, correction in zip(lines.sites, lines.terms, found, strict=True):
-        added = Term(CORRECTION, (), 1.0, correction.value, "regression on measured values, models/README.md")
-        estimates.append(Estimate(site, (*terms, added), correction.half_width, correction.support))
+        trained = correction.value - correction.own
+        added = [Term(CORRECTION, (), 1.0, trained, "regression on measured values, models/README.md")]
+        if correction.own:
+            added.append(
+                Term(OWN_CORRECTION, (), 1.0, correction.own, "conditioned on the local model's values")
+            )
+        estimates.append(Estimate(site, (*terms, *added), correction.half_width, correction.support))
     return tuple(estimates)
 
 
@@ -254,6 +263,8 @@ def _prediction(
     notes = list(parent.notes)
     if conditions != STANDARD:
         notes.append(f"at {conditions}")
+    if any(term.name == OWN_CORRECTION for estimate in estimates for term in estimate.terms[-1:]):
+        notes.append(OWN_NOTE)
     if not basic:
         notes.append("no nitrogen takes a proton above pH -5")
     if equilibrium.approximate:

@@ -22,9 +22,10 @@ from .depiction import MARK, Picture, lead_line, measured_picture, picture_of
 from .entries import GRID, Entry, entries_of, subjects_of
 from .explanation import CAUTION, INTERVAL_NOTE, LEAST_SHOWN, SiteLine
 from .records import CONSTANT_COLUMNS, Record, clean_ph, column_positions, ranking
-from .request import STANDARD, Conditions
+from .request import STANDARD, Conditions, Request
 
 if TYPE_CHECKING:
+    from .conditioning import LocalModel
     from .evidence import Analogue
 
 CURVE_LEVELS = 255  # a share of the curve is kept as two hexadecimal digits
@@ -44,6 +45,7 @@ def report_html(
     title: str = "Basicity report",
     temperature: float = 25.0,
     ionic_strength: float = 0.0,
+    local: LocalModel | None = None,
 ) -> str:
     """The report of a list as the text of one page.
 
@@ -61,6 +63,8 @@ def report_html(
         Heading of the page.
     temperature, ionic_strength : float
         Of the constants and states [C], 0 to 60, and [mol/L], 0 to 0.5.
+    local : LocalModel, optional
+        A user's own measurements (`condition`).
 
     Raises
     ------
@@ -79,7 +83,7 @@ def report_html(
         raise ValueError(
             f"more than {REPORT_LIMIT:,} rows are no page to read; rank the list and take its top"
         )
-    entries = entries_of(subjects, values, conditions)
+    entries = entries_of(subjects, values, Request(conditions, local=local))
     order = ranking([entry.record for entry in entries])
     return page([(place, entries[n]) for place, n in order], values, title, conditions)
 

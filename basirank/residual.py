@@ -152,6 +152,8 @@ class Correction(NamedTuple):
     explained : ndarray, shape (d,)
         Coordinates along the directions that the measured values of the group explain: the product of those of two
         sites is what the measured values take off their covariance [pK units].
+    own : float
+        The part of `value` that a user's own measured constants add (`conditioning`) [pK units].
     """
 
     value: float
@@ -159,6 +161,7 @@ class Correction(NamedTuple):
     support: str
     variance: float
     explained: Floats
+    own: float = 0.0
 
 
 _MOST_READ = 50_000
@@ -246,6 +249,10 @@ class Model:
     def prior(self, group: str) -> float:
         """Prior variance of a correction in a group [pK units squared]."""
         return self.kernel.variance * (self.groups[group].scale if group in self.groups else 1.0)
+
+    def prior_of(self, site: Site) -> float:
+        """Prior variance of the correction of a site [pK units squared]."""
+        return self.prior(group_of()[site.row.family])
 
 
 @cache

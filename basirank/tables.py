@@ -4,6 +4,7 @@ A line that opens with `#` is a remark. Tables are read once and kept.
 """
 
 import csv
+import hashlib
 import tomllib
 from functools import cache
 from importlib.resources import files
@@ -98,3 +99,14 @@ def read_model_table(name: str) -> tuple[dict[str, str], ...]:
     if not resource.is_file():
         return ()
     return _parse(name, resource.read_text(encoding="utf-8"))
+
+
+@cache
+def tables_digest() -> str:
+    """Digest of the parameter tables and the trained arrays: which shipped model this is."""
+    digest = hashlib.blake2b(digest_size=16)
+    for package in ("basirank.parameters", "basirank.models"):
+        for path in sorted(files(package).iterdir(), key=lambda one: one.name):
+            if path.is_file():
+                digest.update(path.name.encode() + b"\0" + path.read_bytes())
+    return digest.hexdigest()

@@ -24,6 +24,8 @@ from .request import STANDARD, Conditions, within
 if TYPE_CHECKING:
     from rdkit import Chem
 
+    from .conditioning import LocalModel
+
 Floats = NDArray[np.float64]
 
 STRONG_ACID = Composition((Ladder(np.array([STRONG]), -1),), 0, ("a strong acid such as HCl",))
@@ -252,6 +254,7 @@ def titrate(
     points: int = 301,
     temperature: float = 25.0,
     ionic_strength: float = 0.0,
+    local: LocalModel | None = None,
 ) -> Titration:
     """Titration curve of a compound, its counter-ions included.
 
@@ -272,6 +275,8 @@ def titrate(
         Volumes of the curve.
     temperature, ionic_strength : float
         [C], 0 to 60; [mol/L], 0 to 0.5, constant throughout (a background salt).
+    local : LocalModel, optional
+        A user's own measurements (`condition`).
 
     Returns
     -------
@@ -295,7 +300,7 @@ def titrate(
         last_volume = within("last volume", last_volume, VOLUME_RANGE, "mL")
     count = within("number of points", points, POINTS_RANGE, "")
     conditions = Conditions(temperature, ionic_strength)
-    analyte = compose(structure, conditions)
+    analyte = compose(structure, conditions, local)
     own = _start(analyte, concentration, conditions)
     kind = titrant if titrant in ("acid", "base") else ""
     if titrant is None:
@@ -304,7 +309,7 @@ def titrate(
         added = STRONG_ACID if kind == "acid" else STRONG_BASE
     else:
         assert titrant is not None
-        added = compose(titrant, conditions)
+        added = compose(titrant, conditions, local)
         kind = "acid" if _start(added, strength, conditions) < NEUTRAL else "base"
     done = titration(
         analyte,

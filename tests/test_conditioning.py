@@ -50,7 +50,7 @@ def test_a_value_that_is_as_predicted_moves_nothing():
         assert first(smiles, local) == pytest.approx(first(smiles), abs=0.02)
 
 
-@settings(max_examples=15)
+@settings(max_examples=15, deadline=None)
 @given(st.permutations([(smiles, 6.5 + 0.1 * n) for n, smiles in enumerate(SERIES[:4])]))
 def test_the_order_of_the_measurements_does_not_matter(measured):
     one, other = condition(measured), condition(sorted(measured))

@@ -2,17 +2,15 @@
 
 from __future__ import annotations
 
-import hashlib
 import platform
-from dataclasses import asdict, dataclass
-from functools import cache
+from dataclasses import asdict, dataclass, replace
 from importlib.metadata import version
-from importlib.resources import files
 from typing import Any
 
 from ..readers import Table
 from ..records import Column, schema, unclashed
 from ..request import PLAIN, Request
+from ..tables import tables_digest
 
 OUTPUT_ENDINGS = (".csv", ".tsv", ".sdf", ".csv.gz", ".tsv.gz", ".sdf.gz", ".csv.zst", ".tsv.zst",
                   ".sdf.zst", ".parquet")  # fmt: skip
@@ -94,23 +92,18 @@ def _each_once(names: tuple[str, ...]) -> tuple[str, ...]:
 def fingerprint(plan: Plan, chunk_size: int) -> dict[str, Any]:
     """What must be the same for a stopped run to be gone on with."""
     return {
-        "options": {"ph": list(plan.ph), "form": plan.form, "packing": plan.packing, **asdict(plan.request)},
+        "options": {"ph": list(plan.ph), "form": plan.form, "packing": plan.packing, **_asked(plan.request)},
         "columns": {"names": list(plan.columns), "types": plan.types.hex() if plan.types else None},
         "versions": {
             **{name: version(name) for name in ("basirank", "numpy", "rdkit")},
             "python": platform.python_version(),
-            "tables": _tables_digest(),
+            "tables": tables_digest(),
             "chunk": chunk_size,
         },
     }
 
 
-@cache
-def _tables_digest() -> str:
-    """Digest of the parameter tables and the trained arrays."""
-    digest = hashlib.blake2b(digest_size=16)
-    for package in ("basirank.parameters", "basirank.models"):
-        for path in sorted(files(package).iterdir(), key=lambda one: one.name):
-            if path.is_file():
-                digest.update(path.name.encode() + b"\0" + path.read_bytes())
-    return digest.hexdigest()
+def _asked(request: Request) -> dict[str, Any]:
+    """A request as JSON has it: of a local model, which one it is."""
+    told = asdict(replace(request, local=None))
+    return told if request.local is None else {**told, "local": request.local.digest}

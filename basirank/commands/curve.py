@@ -74,6 +74,7 @@ def command(
             ph,
             log_p=log_p,
             conditions=request.conditions,
+            local=request.local,
         )
         for row, found in zip(rows, curves, strict=True):
             if len(found.ph):

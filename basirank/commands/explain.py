@@ -72,6 +72,7 @@ def command(
                     temperature=request.conditions.temperature,
                     ionic_strength=request.conditions.ionic_strength,
                     show_pkb=request.pkb,
+                    local=request.local,
                 )
             if told is None or told.status == "refused":
                 reason = row.problem if told is None else told.message

@@ -76,7 +76,7 @@ def command(
                 f"more than {RANK_LIMIT:,} rows: rank sorts, so it holds them all; use annotate instead"
             )
         if output is not None and ending == ".html":
-            write_page(rows, table, values, request.conditions, selection, TITLE, output)
+            write_page(rows, table, values, request, selection, TITLE, output)
             return 0
         progress = Progress(on_terminal(sys.stderr))
         records: list[Record] = []

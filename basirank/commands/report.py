@@ -14,7 +14,7 @@ from ..annotation import CHUNK
 from ..batch.compute import with_molecules
 from ..readers import InputError, Row, Table, open_table
 from ..records import schema
-from ..request import Conditions, Request
+from ..request import Request
 from ..selection import Selection, selected
 from ..writers import open_output
 from .shared import (
@@ -71,7 +71,7 @@ def command(
             raise InputError(
                 f"more than {REPORT_LIMIT:,} rows are no page to read: rank the list and take its top"
             )
-        write_page(rows, table, values, request.conditions, selection, title, target)
+        write_page(rows, table, values, request, selection, title, target)
     return 0
 
 
@@ -79,7 +79,7 @@ def write_page(
     rows: Sequence[Row],
     table: Table,
     ph: tuple[float, ...],
-    conditions: Conditions,
+    request: Request,
     selection: Selection,
     title: str,
     output: str,
@@ -91,14 +91,14 @@ def write_page(
     progress = Progress(on_terminal(sys.stderr))
     entries: list[Entry] = []
     for batch in batches_of(rows, CHUNK):
-        entries += entries_of([subject_of(row, table) for row in with_molecules(batch)], ph, conditions)
+        entries += entries_of([subject_of(row, table) for row in with_molecules(batch)], ph, request)
         progress.show(len(entries), len(batch) == CHUNK)
     progress.clear()
     records = [entry.record for entry in entries]
     order = selected(records, [entry.subject.name for entry in entries], selection, schema(ph))
     no_row_left(order, records)
     with open_output(output) as stream:
-        stream.write(page([(place, entries[n]) for place, n in order], ph, title, conditions))
+        stream.write(page([(place, entries[n]) for place, n in order], ph, title, request.conditions))
     summarise(Counter(str(record[0]) for record in records), table, output, len(order))
 
 

@@ -94,6 +94,8 @@ def request_options(*, forms: bool = False, pkb: bool = False) -> Callable[[Comm
                      help="Temperature of constants and states, 0 to 60 C. [default: 25]"),
         click.option("--ionic-strength", metavar="I", default="0",
                      help="Ionic strength in mol/L, 0 to 0.5; constants are then mixed ones. [default: 0]"),
+        click.option("--local", "local_file", metavar="FILE",
+                     help="Take own measurements into account, from a file of `basirank calibrate`."),
     ]  # fmt: skip
     if forms:
         options.append(
@@ -108,6 +110,7 @@ def request_options(*, forms: bool = False, pkb: bool = False) -> Callable[[Comm
             *args: Any,
             temperature: str,
             ionic_strength: str,
+            local_file: str | None,
             forms: bool = False,
             show_pkb: bool = False,
             **kwargs: Any,
@@ -116,7 +119,12 @@ def request_options(*, forms: bool = False, pkb: bool = False) -> Callable[[Comm
                 conditions = Conditions(temperature, ionic_strength)  # type: ignore[arg-type]
             except ValueError as error:
                 raise InputError(str(error)) from None
-            return command(*args, request=Request(conditions, forms, show_pkb), **kwargs)
+            local = None
+            if local_file is not None:
+                from ..local_models import read_local
+
+                local = read_local(local_file)
+            return command(*args, request=Request(conditions, forms, show_pkb, local), **kwargs)
 
         wrapped: Any = with_request
         for option in reversed(options):

@@ -76,6 +76,7 @@ def command(
             points=points,  # type: ignore[arg-type]
             temperature=conditions.temperature,
             ionic_strength=conditions.ionic_strength,
+            local=request.local,
         )
     except Refusal as reason:
         say(f"{name or row.structure}: refused: {reason}")
