@@ -10,8 +10,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cache
 from importlib.resources import as_file, files
+from typing import Any
 
 import numpy as np
+from rdkit import Chem, rdBase
 
 from .graph import Graph
 from .residual import covariances, group_of
@@ -67,6 +69,40 @@ def _measured() -> dict[str, np.ndarray]:
     resource = files("basirank.models").joinpath("evidence.npz")
     with as_file(resource) as path, np.load(path, allow_pickle=False) as arrays:
         return dict(arrays)
+
+
+@cache
+def trained_compounds() -> frozenset[str]:
+    """Keys (`compound_keys`) of all compounds with a measured value behind the model."""
+    return frozenset().union(*(compound_keys(smiles) for smiles in set(_measured()["smiles"].tolist())))
+
+
+def compound_keys(*structures: Any) -> frozenset[str]:
+    """Which compound this is: first block of the InChIKey, without stereo, isotopes, mobile protons and atom maps.
+
+    Parameters
+    ----------
+    structures : str or rdkit.Chem.Mol
+        One or several drawings of it; one that has no InChI gives no key.
+
+    Examples
+    --------
+    >>> compound_keys("CC(N)=[NH:1]", "CC(=N)N") == compound_keys("N=C(C)N")
+    True
+    """
+    keys = set()
+    with rdBase.BlockLogs():
+        for structure in structures:
+            text = isinstance(structure, str)
+            mol = Chem.MolFromSmiles(structure.split()[0]) if text else Chem.Mol(structure)
+            if mol is None:
+                continue
+            for atom in mol.GetAtoms():
+                atom.SetAtomMapNum(0)
+                atom.SetIsotope(0)
+            if key := Chem.MolToInchiKey(mol):
+                keys.add(str(key[:14]))
+    return frozenset(keys)
 
 
 def analogues(graph: Graph, site: Site, value: float) -> tuple[Analogue, ...]:

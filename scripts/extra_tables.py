@@ -17,11 +17,11 @@ from pathlib import Path
 from statistics import median
 
 from compounds import held_out, only_scores, skeleton
-from ladder import along_ladder
 from measured_rows import Row, rows_of
 from rdkit import Chem, rdBase
 
 from basirank.prediction import Prediction, predict
+from basirank.scoring import along_ladder
 
 NEEDED = ("smiles", "pka_type", "pka_value")
 TEMPERATURES = (15.0, 35.0)

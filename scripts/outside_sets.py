@@ -19,11 +19,11 @@ from dataclasses import dataclass, field
 from importlib.util import find_spec
 from pathlib import Path
 
-from ladder import along_ladder
 from rdkit import Chem, rdBase
 from rdkit.Chem import Descriptors
 
 from basirank.prediction import predict
+from basirank.scoring import along_ladder
 from basirank.structures import Refusal, read_parent
 
 ROOT = Path(__file__).resolve().parent.parent
