@@ -1,7 +1,6 @@
 """Ranked, explained pKaH values with intervals, site by site, and the protonation state at a pH.
 
-`annotate`, `annotate_frame`, `rank`, `explain`, `report_html`, `show`, `curve` and `titrate` are loaded when first
-used, so that importing the package stays cheap.
+The calls are loaded when first used, so that importing the package stays cheap.
 """
 
 from __future__ import annotations
@@ -16,6 +15,7 @@ if TYPE_CHECKING:
     from .display import show
     from .explanation import Explanation, explain
     from .report import report_html
+    from .scoring import Score, score
     from .titration import Titration, titrate
 
 __version__ = "0.1.0"
@@ -24,6 +24,7 @@ __all__ = [
     "Explanation",
     "LocalModel",
     "Measurement",
+    "Score",
     "Titration",
     "__version__",
     "annotate",
@@ -33,6 +34,7 @@ __all__ = [
     "explain",
     "rank",
     "report_html",
+    "score",
     "show",
     "titrate",
 ]
@@ -50,6 +52,8 @@ _HOMES = {
     "titrate": "titration",
     "Titration": "titration",
     "report_html": "report",
+    "score": "scoring",
+    "Score": "scoring",
     "show": "display",
 }
 

@@ -393,7 +393,7 @@ def score(
     [('bases', 2, 0)]
     """
     conditions = Conditions(temperature, ionic_strength)
-    if not hasattr(table, "columns"):
+    if isinstance(table, str | os.PathLike):
         return _score_file(os.fspath(table), smiles_column, value_column, kind, conditions, local, lowest)
     names = list(table.columns)
     place = structure_column(names, smiles_column)
