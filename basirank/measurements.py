@@ -212,7 +212,7 @@ def _measured(
     value = _number(cells, columns.value, "the measured value")
     if value is None:
         raise ValueError("no measured value given")
-    said = _text(cells, columns.kind).casefold()
+    said = _given(cells, columns.kind).casefold()
     if said and said not in KINDS:
         raise ValueError(f"kind must be pkah or pka, not {said!r}")
     kind = KINDS[said] if said else columns.default_kind
@@ -235,14 +235,23 @@ def _measured(
 
 def _text(cells: Sequence[Any], place: int | None) -> str:
     """A cell as text; empty for one that holds nothing."""
-    if place is None or place >= len(cells) or cells[place] is None:
+    if place is None or place >= len(cells):
         return ""
-    text = str(cells[place]).strip()
+    cell = cells[place]
+    nothing = (
+        cell is None or (isinstance(cell, float) and math.isnan(cell)) or type(cell).__name__ == "NAType"
+    )
+    return "" if nothing else str(cell).strip()
+
+
+def _given(cells: Sequence[Any], place: int | None) -> str:
+    """The same, empty also for a word that says that nothing is known."""
+    text = _text(cells, place)
     return "" if text.casefold() in MISSING else text
 
 
 def _number(cells: Sequence[Any], place: int | None, what: str) -> float | None:
-    text = _text(cells, place)
+    text = _given(cells, place)
     if not text:
         return None
     try:

@@ -51,12 +51,13 @@ def parity_svg(score: Score, *, labelled: int = 6, note: str = "") -> str:
     def at(measured: float, predicted: float) -> tuple[float, float]:
         return LEFT + (measured - low) * scale, TOP + SIDE - (predicted - low) * scale
 
-    parts = [*_heading(score, note), *_axes(low, high, at)]
-    if len(score.rows) <= MOST_INTERVALS:
+    with_intervals = len(score.rows) <= MOST_INTERVALS
+    parts = [*_heading(score, note), *_axes(low, high, at, with_intervals)]
+    if with_intervals:
         parts += [_interval(row, at, low, high) for row in score.rows]
     ordered = sorted(score.rows, key=lambda row: not row.trained)  # what is no test lies underneath
     parts += [_point(*at(row.measured.value, row.predicted), row) for row in ordered]
-    parts += _labels(score, labelled, at)
+    parts += _labels(score, labelled, at, with_intervals)
     parts += _key(score)
     width, height = LEFT + SIDE + RIGHT, TOP + SIDE + BOTTOM
     return (
@@ -89,7 +90,7 @@ def _heading(score: Score, note: str) -> list[str]:
     ]
 
 
-def _axes(low: float, high: float, at: Place) -> list[str]:
+def _axes(low: float, high: float, at: Place, with_intervals: bool) -> list[str]:
     left, bottom = at(low, low)
     right, top = at(high, high)
     corners = [(low, low), (low, low + 1), (high - 1, high), (high, high), (high, high - 1), (low + 1, low)]
@@ -111,7 +112,13 @@ def _axes(low: float, high: float, at: Place) -> list[str]:
         _stroke(left, top, left, bottom, INK, 1.4),
         _stroke(left, bottom, right, bottom, INK, 1.4),
         _text((left + right) / 2, bottom + 48, "measured", anchor="middle"),
-        _text(30.0, middle, "predicted, with 90 % interval", anchor="middle", extra=turned),
+        _text(
+            30.0,
+            middle,
+            "predicted, with 90 % interval" if with_intervals else "predicted",
+            anchor="middle",
+            extra=turned,
+        ),
     ]
 
 
@@ -148,8 +155,8 @@ def _shape(x: float, y: float, colour: str, supported: bool, title: str = "") ->
     )
 
 
-def _labels(score: Score, count: int, at: Place) -> list[str]:
-    """Names of the farthest rows, clear of points, lines and the frame."""
+def _labels(score: Score, count: int, at: Place, with_intervals: bool) -> list[str]:
+    """Names of the farthest rows, clear of points, lines and the frame; one that would cross another stays away."""
     worst = score.worst(count)
     labels = [
         Label(*at(row.measured.value, row.predicted), DOT + 1, LETTER * SMALL * len(_name(row)) * 1.06 + 4, SMALL + 3)
@@ -164,15 +171,35 @@ def _labels(score: Score, count: int, at: Place) -> list[str]:
         Box(LEFT - 40, TOP - 60, right + 40, TOP),
         Box(LEFT - 40, bottom, right + 40, bottom + 60),
     ]
-    unity = (LEFT, bottom, right, TOP)
-    boxes = place_labels(labels, [unity], [*dots, *outside])
+    lines = [(LEFT, bottom, right, TOP)]
+    if with_intervals:
+        lines += [
+            (*at(of.value, row.predicted - row.half_width), *at(of.value, row.predicted + row.half_width))
+            for row in score.rows
+            for of in (row.measured,)
+        ]
+    boxes = place_labels(labels, lines, [*dots, *outside])
     parts = []
-    for row, label, box in zip(worst, labels, boxes, strict=True):
-        if line := lead_line(label.x, label.y, box, label.radius):
+    for n, (row, label, box) in enumerate(zip(worst, labels, boxes, strict=True)):
+        line = lead_line(label.x, label.y, box, label.radius)
+        if line and any(_crosses(line, other) for m, other in enumerate(boxes) if m != n):
+            continue
+        if line:
             parts.append(_stroke(*line, FAINT, 0.9))
         middle = (box.left + box.right) / 2
         parts.append(_text(middle, box.bottom - 4, _name(row), anchor="middle", size=SMALL, halo=True))
     return parts
+
+
+def _crosses(line: tuple[float, float, float, float], box: Box) -> bool:
+    """Whether a line runs over a rectangle."""
+    x1, y1, x2, y2 = line
+    steps = int(math.hypot(x2 - x1, y2 - y1) / 2) + 1
+    return any(
+        box.left < x1 + (x2 - x1) * n / steps < box.right
+        and box.top < y1 + (y2 - y1) * n / steps < box.bottom
+        for n in range(steps + 1)
+    )
 
 
 def _name(row: Scored) -> str:

@@ -20,6 +20,7 @@ COLUMNS = ("row", "name", "smiles", "status", "message", "kind", "step", "measur
            "high", "inside", "class", "family", "support", "in_training", "remark")  # fmt: skip
 HEADING = ("values", "n", "MAE", "RMSE", "bias", "median", "≤ 0.5", "≤ 1.0", "90 % holds", "± mean")
 CLASS_HEADING = ("class of the site", "n", "MAE", "bias", "≤ 1.0", "n new", "MAE new")
+FARTHEST = ("error", "measured", "predicted", "row", "compound", "structure", "class", "support", "remark")
 TITLES = {"pkah": "Bases (pKaH)", "pka": "Acids (pKa)"}
 PICTURE_WIDTH = 320.0
 
@@ -193,33 +194,12 @@ def score_markdown(score: Score, worst: int = 10) -> str:
                 blocks.append(table(heading, _plain(own), list(range(1, len(heading)))))
     blocks += [f"- {plain(line)}" for line in remarks(score)]
     if worst and score.rows:
-        heading = (
-            "error",
-            "measured",
-            "predicted",
-            "row",
-            "compound",
-            "structure",
-            "class",
-            "support",
-            "remark",
-        )
         rows = []
         for row in score.worst(worst):
-            error, measured, predicted, _, number, name, site_class, support, remark = _worst_line(row)
-            cells = [plain(cell) for cell in (name, site_class, support, remark)]
-            rows.append(
-                [
-                    error,
-                    measured,
-                    predicted,
-                    number,
-                    cells[0],
-                    code(text_of(row.measured.structure)),
-                    *cells[1:],
-                ]
-            )
-        blocks += ["## Farthest", table(heading, rows, [0, 1, 2, 3])]
+            shown = _worst_line(row)
+            cells = [plain(cell) for cell in shown[4:]]
+            rows.append([*shown[:3], *cells[:2], code(text_of(row.measured.structure)), *cells[2:]])
+        blocks += ["## Farthest", table(FARTHEST, rows, [0, 1, 2, 3])]
     if score.unused:
         rows = [
             [str(one.number), plain(one.name or text_of(one.structure)), plain(one.told)]
