@@ -10,10 +10,12 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from .annotation import annotate, annotate_frame, rank
+    from .calibration import Calibration, calibrate
     from .conditioning import LocalModel, Measurement, condition
     from .curves import curve
     from .display import show
     from .explanation import Explanation, explain
+    from .local_models import read_local, save_local
     from .report import report_html
     from .scoring import Score, score
     from .titration import Titration, titrate
@@ -21,6 +23,7 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 __all__ = [
+    "Calibration",
     "Explanation",
     "LocalModel",
     "Measurement",
@@ -29,11 +32,14 @@ __all__ = [
     "__version__",
     "annotate",
     "annotate_frame",
+    "calibrate",
     "condition",
     "curve",
     "explain",
     "rank",
+    "read_local",
     "report_html",
+    "save_local",
     "score",
     "show",
     "titrate",
@@ -43,7 +49,11 @@ _HOMES = {
     "annotate": "annotation",
     "annotate_frame": "annotation",
     "rank": "annotation",
+    "calibrate": "calibration",
+    "Calibration": "calibration",
     "condition": "conditioning",
+    "read_local": "local_models",
+    "save_local": "local_models",
     "LocalModel": "conditioning",
     "Measurement": "conditioning",
     "curve": "curves",

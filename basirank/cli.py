@@ -29,6 +29,7 @@ COMMANDS = {
     "explain": "Show why a compound has its pKaH, term by term.",
     "report": "Write a ranked list as a page with pictures, intervals and increments.",
     "curve": "Forms, charge and log D against pH, as a table or a picture.",
+    "calibrate": "Learn from own measured constants: a local model for the other commands.",
     "score": "Compare a table of measured constants with the predicted ones.",
     "titrate": "Titration curve of a compound or its salt, with equivalence points.",
 }

@@ -7,14 +7,18 @@ not say (kind, step, conditions) is taken as stated in `columns_of`.
 from __future__ import annotations
 
 import math
+import os
 import re
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
-from typing import Any, Literal
+from typing import TYPE_CHECKING, Any, Literal
 
 from .readers.rows import InputError
-from .records import NAMES_LISTED
+from .records import NAMES_LISTED, structure_column
 from .request import STANDARD, Conditions
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 Kind = Literal["pkah", "pka"]
 
@@ -23,6 +27,9 @@ VALUE_NAMES = ("pkah", "pka", "value", "measured", "measured_value", "measured_p
 """Columns that hold measured values, where none is named."""
 NAME_NAMES = ("name", "compound", "title", "id")
 KINDS: dict[str, Kind] = {"pkah": "pkah", "base": "pkah", "pka": "pka", "acid": "pka"}
+CONSTANTS = ("", "mixed", "concentration", "thermodynamic")
+"""Types of constant: with the activity of hydrogen ions alone, of concentrations alone, and at ionic strength 0."""
+WATER = ("water", "h2o", "aqueous", "0", "0 %", "0%")
 MISSING = ("", "na", "nan", "n/a", "none", "null", "-", "<na>")
 
 
@@ -49,6 +56,14 @@ class Measured:
         Temperature and ionic strength at which the value holds.
     first : bool
         Whether it is the first constant of its kind.
+    error : float or None
+        Standard deviation of the value, where given [pK units].
+    method, cosolvent : str
+        How it was measured, and in which mixture with water if not in water.
+    concentration_constant : bool
+        Whether it is a constant of concentrations alone at its ionic strength, not of the activity of hydrogen ions.
+    stated : bool
+        Whether the table says of which kind it is; if not, `kind` and `step` are taken for granted.
     """
 
     number: int
@@ -62,6 +77,11 @@ class Measured:
     note: str = ""
     conditions: Conditions = STANDARD
     first: bool = True
+    error: float | None = None
+    method: str = ""
+    cosolvent: str = ""
+    concentration_constant: bool = False
+    stated: bool = True
 
     @property
     def wanted(self) -> str:
@@ -102,6 +122,11 @@ class Columns:
     temperature: int | None
     ionic_strength: int | None
     note: int | None
+    error: int | None
+    method: int | None
+    cosolvent: int | None
+    constant: int | None
+    stated: bool
 
 
 def columns_of(names: Sequence[object], value_column: str | None = None, kind: str | None = None) -> Columns:
@@ -168,6 +193,11 @@ def columns_of(names: Sequence[object], value_column: str | None = None, kind: s
         temperature=place("temperature", "temperature_c"),
         ionic_strength=place("ionic_strength"),
         note=place("note", "remark"),
+        error=place("error", "sd", "standard_deviation", "uncertainty"),
+        method=place("method"),
+        cosolvent=place("cosolvent", "co_solvent", "solvent"),
+        constant=place("constant", "constant_type"),
+        stated=kind is not None or "pkah" in plain[value],
     )
 
 
@@ -206,6 +236,42 @@ def measured_of(
     return found
 
 
+def structures_of(
+    table: pd.DataFrame | str | os.PathLike[str],
+    smiles_column: str | None = None,
+    value_column: str | None = None,
+    kind: str | None = None,
+) -> tuple[list[tuple[Any, Sequence[Any], str | None]], Columns]:
+    """Rows of a frame or a file as `measured_of` takes them, and the columns found.
+
+    Raises
+    ------
+    ValueError
+        No such column, or a file that cannot be read (`InputError`).
+    """
+    if isinstance(table, str | os.PathLike):
+        from .batch.compute import with_smiles
+        from .readers import open_table
+
+        with open_table([os.fspath(table)], smiles_column=smiles_column) as opened:
+            columns = columns_of(opened.columns, value_column, kind)
+            return [
+                (row.structure, row.cells, row.problem) for row in with_smiles(list(opened.rows))
+            ], columns
+    names = list(table.columns)
+    place = structure_column(names, smiles_column)
+    columns = columns_of(names, value_column, kind)
+    return [
+        (_structure(cells[place]), cells, None) for cells in table.itertuples(index=False, name=None)
+    ], columns
+
+
+def _structure(cell: Any) -> Any:
+    from rdkit import Chem
+
+    return cell if isinstance(cell, str | Chem.Mol) else None
+
+
 def _measured(
     number: int, structure: Any, cells: Sequence[Any], columns: Columns, conditions: Conditions, name: str
 ) -> Measured:
@@ -222,15 +288,31 @@ def _measured(
     charge = _whole(cells, columns.acid_charge, "the charge of the acid form")
     temperature = _number(cells, columns.temperature, "the temperature")
     strength = _number(cells, columns.ionic_strength, "the ionic strength")
+    constant = _text(cells, columns.constant).casefold()
+    if constant not in CONSTANTS:
+        raise ValueError(f"a constant is mixed, concentration or thermodynamic, not {constant!r}")
+    if constant == "thermodynamic":
+        strength = 0.0
     at = Conditions(
         conditions.temperature if temperature is None else temperature,
         conditions.ionic_strength if strength is None else strength,
     )
+    error = _number(cells, columns.error, "the error")
+    if error is not None and error <= 0:
+        raise ValueError(f"the error must be above 0, not {error:g}")
     first = charge == 1 if charge is not None else step in (None, 1)
     return Measured(
         number, structure, value, kind, step or 1, charge, name,
-        _text(cells, columns.own_class), _text(cells, columns.note), at, first,
+        _text(cells, columns.own_class), _text(cells, columns.note), at, first, error,
+        _text(cells, columns.method), _cosolvent(cells, columns.cosolvent), constant == "concentration",
+        columns.stated or bool(said) or charge is not None,
     )  # fmt: skip
+
+
+def _cosolvent(cells: Sequence[Any], place: int | None) -> str:
+    """What stands beside water; empty for water alone."""
+    text = _text(cells, place)
+    return "" if text.casefold() in WATER else text
 
 
 def _text(cells: Sequence[Any], place: int | None) -> str:

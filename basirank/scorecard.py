@@ -15,6 +15,7 @@ from .parity import parity_svg
 from .prediction import predict
 from .request import PLAIN, Request
 from .scoring import APART, Figures, Group, Score, Scored
+from .writers import aligned_table
 
 COLUMNS = ("row", "name", "smiles", "status", "message", "kind", "step", "measured", "predicted", "error", "low",
            "high", "inside", "class", "family", "support", "in_training", "remark")  # fmt: skip
@@ -138,10 +139,10 @@ def score_text(score: Score, worst: int = 10) -> str:
     for kind, title in TITLES.items():
         main, of_class, own = _tables(score, kind)
         if main:
-            blocks.append(f"{title}\n" + _aligned(HEADING, main))
-            blocks.append(_aligned(CLASS_HEADING, of_class))
+            blocks.append(f"{title}\n" + aligned_table(HEADING, main))
+            blocks.append(aligned_table(CLASS_HEADING, of_class))
             if own:
-                blocks.append(_aligned(("class in the table", *CLASS_HEADING[1:]), own))
+                blocks.append(aligned_table(("class in the table", *CLASS_HEADING[1:]), own))
     if not score.rows:
         blocks.append("No row could be used.")
     if lines := remarks(score):
@@ -149,7 +150,7 @@ def score_text(score: Score, worst: int = 10) -> str:
     if worst and score.rows:
         heading = ("error", "measured", "predicted", "±90%", "row", "compound", "class", "support", "remark")
         rows = [_worst_line(row) for row in score.worst(worst)]
-        blocks.append(f"Farthest {len(rows)}\n" + _aligned(heading, rows, text=(5, 6, 7, 8)))
+        blocks.append(f"Farthest {len(rows)}\n" + aligned_table(heading, rows, text=(5, 6, 7, 8)))
     blocks.append(f"{INTERVAL_NOTE}\n{CAUTION}")
     return "\n\n".join(blocks)
 
@@ -163,21 +164,6 @@ def _worst_line(row: Scored) -> list[str]:
         f"{row.error:+z.2f}", f"{of.value:.2f}", f"{row.predicted:.2f}", f"{row.half_width:.2f}", str(of.number),
         of.name or text_of(of.structure), row.site_class, row.support, "; ".join(notes),
     ]  # fmt: skip
-
-
-def _aligned(heading: Sequence[str], rows: Sequence[Sequence[str]], text: Sequence[int] = (0,)) -> str:
-    clean = [
-        ["".join(c if c.isprintable() else " " for c in cell) for cell in row] for row in (heading, *rows)
-    ]
-    widths = [max(len(row[n]) for row in clean) for n in range(len(heading))]
-    lines = (
-        "  ".join(
-            cell.ljust(width) if n in text else cell.rjust(width)
-            for n, (cell, width) in enumerate(zip(row, widths, strict=True))
-        )
-        for row in clean
-    )
-    return "\n".join("  " + line.rstrip() for line in lines)
 
 
 def score_markdown(score: Score, worst: int = 10) -> str:

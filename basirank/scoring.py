@@ -10,16 +10,15 @@ import os
 from collections import defaultdict
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 
 from .annotation import CHUNK
 from .equilibrium import Step
 from .evidence import compound_keys, trained_compounds
-from .measurements import Columns, Measured, Unused, columns_of, measured_of
+from .measurements import Columns, Measured, Unused, measured_of, structures_of
 from .prediction import Prediction, predict
-from .records import structure_column
 from .request import Conditions
 
 if TYPE_CHECKING:
@@ -393,34 +392,5 @@ def score(
     [('bases', 2, 0)]
     """
     conditions = Conditions(temperature, ionic_strength)
-    if isinstance(table, str | os.PathLike):
-        return _score_file(os.fspath(table), smiles_column, value_column, kind, conditions, local, lowest)
-    names = list(table.columns)
-    place = structure_column(names, smiles_column)
-    columns = columns_of(names, value_column, kind)
-    rows = [(_structure(cells[place]), cells, None) for cells in table.itertuples(index=False, name=None)]
-    return scored(measured_of(rows, columns, conditions), columns, local=local, lowest=lowest)
-
-
-def _structure(cell: Any) -> Any:
-    from rdkit import Chem
-
-    return cell if isinstance(cell, str | Chem.Mol) else None
-
-
-def _score_file(
-    name: str,
-    smiles_column: str | None,
-    value_column: str | None,
-    kind: str | None,
-    conditions: Conditions,
-    local: LocalModel | None,
-    lowest: float,
-) -> Score:
-    from .batch.compute import with_smiles
-    from .readers import open_table
-
-    with open_table([name], smiles_column=smiles_column) as table:
-        columns = columns_of(table.columns, value_column, kind)
-        rows = [(row.structure, row.cells, row.problem) for row in with_smiles(list(table.rows))]
+    rows, columns = structures_of(table, smiles_column, value_column, kind)
     return scored(measured_of(rows, columns, conditions), columns, local=local, lowest=lowest)

@@ -187,6 +187,22 @@ def ranked_table(
     return "\n".join(lines)
 
 
+def aligned_table(heading: Sequence[str], rows: Sequence[Sequence[str]], text: Sequence[int] = (0,)) -> str:
+    """Rows of text in columns, indented; columns named by number in `text` stand to the left, numbers to the right."""
+    clean = [
+        ["".join(c if c.isprintable() else " " for c in cell) for cell in row] for row in (heading, *rows)
+    ]
+    widths = [max(len(row[n]) for row in clean) for n in range(len(heading))]
+    lines = (
+        "  ".join(
+            cell.ljust(width) if n in text else cell.rjust(width)
+            for n, (cell, width) in enumerate(zip(row, widths, strict=True))
+        )
+        for row in clean
+    )
+    return "\n".join("  " + line.rstrip() for line in lines)
+
+
 def _fit(widths: dict[str, int], width: int) -> dict[str, int]:
     """Column widths that fit: the flexible ones shrink, the widest first, then columns go, the last first."""
     widths = dict(widths)
