@@ -31,7 +31,7 @@ from .kinship import Footprint, Kindred, footprint
 from .prediction import Lines, corrections_of, site_lines
 from .residual import Correction, corrections, model
 from .sites import Site
-from .structures import Refusal, read_parent
+from .structures import Parent, Refusal, read_parent
 
 Floats = NDArray[np.float64]
 
@@ -174,30 +174,40 @@ class LocalModel:
 
 @dataclass(frozen=True, slots=True)
 class _Observed:
-    """A measured constant with the molecule it belongs to: corrected constants, coupling, which step it is."""
+    """A measured constant with the molecule it belongs to: corrected constants, coupling, places of its sites."""
 
+    measurement: Measurement
     compound: str
-    marked: str
     pk: Floats
     acid: NDArray[np.bool_]
     coupling: Floats
-    exclusive: NDArray[np.bool_] | None
-    measurement: Measurement
+    exclusive: NDArray[np.bool_]
     places: NDArray[np.int64]
 
-    def through(self, moved: Floats) -> tuple[float, Floats]:
-        """Macroscopic constant with the corrections moved, and its derivative by those of the sites."""
-        exclusive = None if self.exclusive is None else self.exclusive[None]
-        polynomial = binding_polynomial(
-            (self.pk + moved)[None], self.acid[None], self.coupling[None], exclusive
+
+class _Molecules:
+    """Molecules of measured constants with the same number of sites, stacked."""
+
+    def __init__(self, rows: Sequence[int], observed: Sequence[_Observed]) -> None:
+        self.rows = np.array(rows)
+        chosen = [observed[row] for row in rows]
+        self.pk, self.acid, self.coupling, self.exclusive, self.places = (
+            np.array([getattr(one, name) for one in chosen])
+            for name in ("pk", "acid", "coupling", "exclusive", "places")
         )
-        of_base = base_steps(polynomial.gain, self.acid[None])[0]
-        constants = polynomial.constants[0]
-        is_base = self.measurement.kind == "pkah"
-        steps = np.flatnonzero(of_base == is_base)
-        steps = steps[np.argsort(-constants[steps] if is_base else constants[steps], kind="stable")]
-        step = int(steps[self.measurement.step - 1])
-        return float(constants[step]), polynomial.gain[0, step]
+        self.is_base = np.array([one.measurement.kind == "pkah" for one in chosen])
+        self.step = np.array([one.measurement.step - 1 for one in chosen])
+
+    def through(self, moved: Floats) -> tuple[Floats, Floats]:
+        """Macroscopic constants with the corrections moved, and their derivatives by those of the sites."""
+        exclusive = self.exclusive if self.exclusive.any() else None
+        polynomial = binding_polynomial(self.pk + moved[self.places], self.acid, self.coupling, exclusive)
+        of_base = base_steps(polynomial.gain, self.acid)
+        order = np.where(self.is_base[:, None], -1.0, 1.0) * polynomial.constants
+        order = np.where(of_base == self.is_base[:, None], order, np.inf)
+        each = np.arange(len(self.rows))
+        step = np.argsort(order, axis=1, kind="stable")[each, self.step]
+        return polynomial.constants[each, step], polynomial.gain[each, step]
 
 
 class _Conditioning:
@@ -205,30 +215,66 @@ class _Conditioning:
 
     def __init__(self, measurements: Iterable[Measurement | Sequence[Any]]) -> None:
         checked = [_checked(n, one) for n, one in enumerate(measurements, start=1)]
-        self.observed, self.footprints = _observed(checked)
+        self.observed, self.marks, self.footprints = _observed(checked)
+        self.compound = np.array([one.compound for one in self.observed])
         kindred = Kindred(self.footprints)
         self.covariance = np.array([kindred.covariances(one) for one in self.footprints])
         self.noise = np.array([one.measurement.error**2 + model().noise ** 2 for one in self.observed])
-        self.gains = np.zeros((len(self.observed), len(self.footprints)))
-        self.residuals = np.zeros(len(self.observed))
+        self.value = np.array([one.measurement.value for one in self.observed])
+        by_size: dict[int, list[int]] = {}
+        for row, one in enumerate(self.observed):
+            by_size.setdefault(len(one.pk), []).append(row)
+        self._stacks = [_Molecules(rows, self.observed) for rows in by_size.values()]
+
+    def through(self, moved: Floats) -> tuple[Floats, Floats]:
+        """Constants of all rows with the corrections moved, and their derivatives by those of all sites."""
+        constants = np.zeros(len(self.observed))
+        gains = np.zeros((len(self.observed), len(self.footprints)))
+        for stack in self._stacks:
+            constants[stack.rows], gain = stack.through(moved)
+            gains[stack.rows[:, None], stack.places] = gain
+        return constants, gains
+
+    def _across(self, gains: Floats) -> Floats:
+        """Gains times the covariance of the sites: few gains of a row differ from zero."""
+        across = np.zeros_like(gains)
+        for stack in self._stacks:
+            own = gains[stack.rows[:, None], stack.places]
+            across[stack.rows] = (own[:, :, None] * self.covariance[stack.places]).sum(axis=1)
+        return across
+
+    def _between(self, gains: Floats, across: Floats) -> Floats:
+        """Covariance of the measured constants without their noise."""
+        between = np.zeros((len(gains), len(gains)))
+        for stack in self._stacks:
+            own = gains[stack.rows[:, None], stack.places]
+            between[:, stack.rows] = (across[:, stack.places] * own).sum(axis=2)
+        return between
+
+    def solved(self, rows: NDArray[np.int64]) -> _Solved:
+        """What some of the measured constants say."""
         moved = np.zeros(len(self.footprints))
         for _ in range(ROUNDS):
-            self.gains[:] = 0.0
-            for row, one in enumerate(self.observed):
-                constant, gain = one.through(moved[one.places])
-                np.add.at(self.gains[row], one.places, gain)
-                self.residuals[row] = one.measurement.value - constant + gain @ moved[one.places]
-            moved = self.moved(np.arange(len(self.observed)))
+            constants, gains = self.through(moved)
+            across = self._across(gains)
+            inner = (self._between(gains, across) + np.diag(self.noise))[np.ix_(rows, rows)]
+            residuals = self.value[rows] - constants[rows] + gains[rows] @ moved
+            moved = np.linalg.solve(inner, residuals) @ across[rows]
+        return _Solved(inner, residuals, gains[rows], moved)
 
-    def pulls(self, rows: NDArray[np.int64]) -> Floats:
-        """How much the residuals of some of the measured constants move the weights of all sites."""
-        gains = self.gains[rows]
-        inner = gains @ self.covariance @ gains.T + np.diag(self.noise[rows])
-        return np.linalg.solve(inner, gains).T
 
-    def moved(self, rows: NDArray[np.int64]) -> Floats:
-        """What some of the measured constants add to the corrections of all sites [pK units]."""
-        return np.asarray(self.covariance @ (self.pulls(rows) @ self.residuals[rows]))
+class _Solved(NamedTuple):
+    """Covariance of some measured constants with their noise, residuals, gains, and what all sites are moved by."""
+
+    inner: Floats
+    residuals: Floats
+    gains: Floats
+    moved: Floats
+
+    @property
+    def pulls(self) -> Floats:
+        """How much each residual moves the weight of each site."""
+        return np.asarray(np.linalg.solve(self.inner, self.gains).T)
 
 
 def condition(measurements: Iterable[Measurement | Sequence[Any]]) -> LocalModel:
@@ -259,15 +305,17 @@ def condition(measurements: Iterable[Measurement | Sequence[Any]]) -> LocalModel
     True
     """
     found = _Conditioning(measurements)
-    pulls = found.pulls(np.arange(len(found.observed)))
-    kept = tuple(one.measurement._replace(structure=one.marked) for one in found.observed)
-    return LocalModel(kept, tuple(found.footprints), pulls, found.residuals, pulls @ found.gains)
+    solved = found.solved(np.arange(len(found.observed)))
+    pulls = solved.pulls
+    kept = tuple(
+        one.measurement._replace(structure=mark)
+        for one, mark in zip(found.observed, found.marks, strict=True)
+    )
+    return LocalModel(kept, tuple(found.footprints), pulls, solved.residuals, pulls @ solved.gains)
 
 
 def left_out(measurements: Iterable[Measurement | Sequence[Any]]) -> list[float]:
     """What is said of each measured constant when all values of its compound are left out and the others kept.
-
-    To first order: the shares of the sites in each step are those with all values in.
 
     Parameters
     ----------
@@ -285,13 +333,11 @@ def left_out(measurements: Iterable[Measurement | Sequence[Any]]) -> list[float]
         As for `condition`.
     """
     found = _Conditioning(measurements)
-    compounds = np.array([one.compound for one in found.observed])
-    said = np.zeros(len(compounds))
-    for compound in dict.fromkeys(compounds.tolist()):
-        moved = found.moved(np.flatnonzero(compounds != compound))
-        for row in np.flatnonzero(compounds == compound).tolist():
-            one = found.observed[row]
-            said[row] = one.through(moved[one.places])[0]
+    said = np.zeros(len(found.observed))
+    for compound in dict.fromkeys(found.compound.tolist()):
+        own, others = (np.flatnonzero((found.compound == compound) == here) for here in (True, False))
+        moved = found.solved(others).moved if len(others) else np.zeros(len(found.footprints))
+        said[own] = found.through(moved)[0][own]
     return said.tolist()  # type: ignore[no-any-return]
 
 
@@ -309,41 +355,52 @@ def _checked(number: int, given: Measurement | Sequence[Any]) -> Measurement:
     return one
 
 
-def _observed(measurements: list[Measurement]) -> tuple[list[_Observed], list[Footprint]]:
-    """Molecules of the measurements; sites of one structure given several times are the same sites."""
+def _observed(measurements: list[Measurement]) -> tuple[list[_Observed], list[str], list[Footprint]]:
+    """Molecules of the measurements with their marked SMILES; sites of one structure given twice are the same sites."""
     if not measurements:
         raise ValueError("no measurement given")
-    observed: list[_Observed] = []
-    footprints: list[Footprint] = []
-    known: dict[str, tuple[Chem.Mol, Lines, tuple[Correction, ...], NDArray[np.int64]]] = {}
+    parents: list[Parent] = []
+    lines_of: dict[str, Lines] = {}
     for number, one in enumerate(measurements, start=1):
         try:
             parent = read_parent(one.structure)
         except Refusal as reason:
             raise ValueError(f"measurement {number}: {reason}") from None
-        if parent.smiles not in known:
-            lines = site_lines(parent)
-            (found,) = corrections_of([lines])
-            if len(lines.sites) > EXACT_SITES:
-                raise ValueError(f"measurement {number}: more than {EXACT_SITES} sites")
-            places = np.arange(len(footprints), len(footprints) + len(lines.sites))
-            for site, value, correction in zip(lines.sites, lines.values, found, strict=True):
-                footprints.append(footprint(lines.graph, site, value, correction))
-            known[parent.smiles] = parent.mol, lines, found, places
-        mol, lines, found, places = known[parent.smiles]
-        steps = sum(site.kind == ("base" if one.kind == "pkah" else "acid") for site in lines.sites)
+        parents.append(parent)
+        if parent.smiles not in lines_of:
+            lines_of[parent.smiles] = site_lines(parent)
+        sites = lines_of[parent.smiles].sites
+        if len(sites) > EXACT_SITES:
+            raise ValueError(f"measurement {number}: more than {EXACT_SITES} sites")
+        steps = sum(site.kind == ("base" if one.kind == "pkah" else "acid") for site in sites)
         if not 1 <= one.step <= steps:
             raise ValueError(
                 f"measurement {number}: the compound has {steps} {one.kind} steps, not {one.step}"
             )
-        coupling, exclusive = couple(lines.graph, lines.sites)
-        pk = np.array([value + item.value for value, item in zip(lines.values, found, strict=True)])
-        acid = np.array([site.kind == "acid" for site in lines.sites], dtype=bool)
-        row = _Observed(parent.smiles, "", pk, acid, coupling, exclusive, one, places)
-        carrier = int(np.argmax(row.through(np.zeros(len(pk)))[1]))
-        marked = _marked(mol, lines.sites[carrier].atom)
-        observed.append(_Observed(parent.smiles, marked, pk, acid, coupling, exclusive, one, places))
-    return observed, footprints
+    footprints: list[Footprint] = []
+    arrays: dict[str, tuple[Any, ...]] = {}
+    corrected = corrections_of(list(lines_of.values()))
+    for (smiles, lines), found in zip(lines_of.items(), corrected, strict=True):
+        places = np.arange(len(footprints), len(footprints) + len(lines.sites))
+        arrays[smiles] = (*_arrays(lines, found), places)
+        for site, value, correction in zip(lines.sites, lines.values, found, strict=True):
+            footprints.append(footprint(lines.graph, site, value, correction))
+    observed, marks = [], []
+    for parent, one in zip(parents, measurements, strict=True):
+        row = _Observed(one, parent.smiles, *arrays[parent.smiles])
+        _, gain = _Molecules([0], [row]).through(np.zeros(len(footprints)))
+        observed.append(row)
+        site = lines_of[parent.smiles].sites[int(np.argmax(gain[0]))]
+        marks.append(_marked(parent.mol, site.atom))
+    return observed, marks, footprints
+
+
+def _arrays(lines: Lines, found: Sequence[Correction]) -> tuple[Any, ...]:
+    """Corrected constants, acids, coupling and tautomeric pairs of a molecule."""
+    coupling, exclusive = couple(lines.graph, lines.sites)
+    pk = np.array([value + item.value for value, item in zip(lines.values, found, strict=True)])
+    acid = np.array([site.kind == "acid" for site in lines.sites], dtype=bool)
+    return pk, acid, coupling, np.zeros(coupling.shape, dtype=bool) if exclusive is None else exclusive
 
 
 def _marked(mol: Chem.Mol, atom: int) -> str:

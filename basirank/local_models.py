@@ -83,7 +83,7 @@ def read_local(path: str | os.PathLike[str]) -> LocalModel:
     try:
         if Path(name).stat().st_size > LARGEST:
             raise InputError(f"{name} is no local model: it is too large")
-        with np.load(name, allow_pickle=False) as stored:
+        with open(name, "rb") as stream, np.load(stream, allow_pickle=False) as stored:
             about = json.loads(str(stored["about"]))
             if about["format"] != FORMAT:
                 raise InputError(
