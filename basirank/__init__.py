@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from .curves import curve
     from .display import show
     from .explanation import Explanation, explain
+    from .features import BasicityFeatures
     from .local_models import read_local, save_local
     from .report import report_html
     from .scoring import Score, score
@@ -23,6 +24,7 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 __all__ = [
+    "BasicityFeatures",
     "Calibration",
     "Explanation",
     "LocalModel",
@@ -46,6 +48,7 @@ __all__ = [
 ]
 
 _HOMES = {
+    "BasicityFeatures": "features",
     "annotate": "annotation",
     "annotate_frame": "annotation",
     "rank": "annotation",

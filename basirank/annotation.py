@@ -61,11 +61,8 @@ def standings_of(
 def _computed(
     structures: Sequence[object], ph: Sequence[float], request: Request, standings: bool
 ) -> list[tuple[Record, Standing | None]]:
-    from rdkit import Chem
-
-    readable = [
-        n for n, item in enumerate(structures) if isinstance(item, str | Chem.Mol) and not _blank(item)
-    ]
+    reasons = [why_unread(item) for item in structures]
+    readable = [n for n, reason in enumerate(reasons) if reason is None]
     found: dict[int, tuple[Record, Standing | None]] = {}
     for start in range(0, len(readable), CHUNK):
         part = readable[start : start + CHUNK]
@@ -73,8 +70,8 @@ def _computed(
         with _collector_at_rest():
             found.update(zip(part, _of_chunk(batch, ph, request, standings), strict=True))
     return [
-        found[n] if n in found else (refused_record(_why_unread(item), ph, request), None)
-        for n, item in enumerate(structures)
+        (refused_record(reason, ph, request), None) if reason is not None else found[n]
+        for n, reason in enumerate(reasons)
     ]
 
 
@@ -102,12 +99,19 @@ def _collector_at_rest() -> Iterator[None]:
             gc.enable()
 
 
-def _blank(item: object) -> bool:
-    return isinstance(item, str) and not item.strip()
+def why_unread(item: object) -> str | None:
+    """Why something is neither a SMILES nor a molecule; None for one that is.
 
+    Examples
+    --------
+    >>> why_unread("CCN"), why_unread(" "), why_unread(7)
+    (None, 'no structure given', 'neither a SMILES nor a molecule: int')
+    """
+    from rdkit import Chem
 
-def _why_unread(item: object) -> str:
-    missing = item is None or _blank(item) or type(item).__name__ in ("NAType", "NaTType")
+    if isinstance(item, Chem.Mol) or (isinstance(item, str) and item.strip()):
+        return None
+    missing = item is None or isinstance(item, str) or type(item).__name__ in ("NAType", "NaTType")
     missing = missing or (isinstance(item, float) and item != item)
     return "no structure given" if missing else f"neither a SMILES nor a molecule: {type(item).__name__}"
 
