@@ -90,7 +90,7 @@ def test_every_shape_of_one_column_gives_the_same(kind: str):
 
 def test_frame_output_keeps_the_index_and_has_the_names_of_get_feature_names_out():
     transformer = BasicityFeatures(ph=[5.5, 7.4], steps=1).set_output(transform="pandas")
-    found = transformer.fit_transform(pd.Series(AMINES[:2], index=["a", "b"], name="structure"))
+    found = transformer.fit_transform(pd.DataFrame({"structure": AMINES[:2]}, index=["a", "b"]))
     assert found.index.tolist() == ["a", "b"]
     assert found.columns.tolist() == transformer.get_feature_names_out().tolist()
     assert transformer.feature_names_in_.tolist() == ["structure"] and transformer.n_features_in_ == 1
