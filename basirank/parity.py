@@ -55,7 +55,7 @@ def parity_svg(score: Score, *, labelled: int = 6, note: str = "") -> str:
     parts = [*_heading(score, note), *_axes(low, high, at, with_intervals)]
     if with_intervals:
         parts += [_interval(row, at, low, high) for row in score.rows]
-    ordered = sorted(score.rows, key=lambda row: not row.trained)  # what is no test lies underneath
+    ordered = sorted(score.rows, key=lambda row: not row.known)  # what is no test lies underneath
     parts += [_point(*at(row.measured.value, row.predicted), row) for row in ordered]
     parts += _labels(score, labelled, at, with_intervals)
     parts += _key(score)
@@ -123,7 +123,7 @@ def _axes(low: float, high: float, at: Place, with_intervals: bool) -> list[str]
 
 
 def _colour(row: Scored) -> str:
-    return TRAINED if row.trained else BASE if row.measured.kind == "pkah" else ACID
+    return TRAINED if row.known else BASE if row.measured.kind == "pkah" else ACID
 
 
 def _interval(row: Scored, at: Place, low: float, high: float) -> str:
@@ -215,7 +215,7 @@ def _clean(text: str) -> str:
 def _key(score: Score) -> list[str]:
     """What shapes and colours mean, those that occur."""
     kinds = {_colour(row) for row in score.rows}
-    words = {BASE: "base", ACID: "acid", TRAINED: "compound in the training table"}
+    words = {BASE: "base", ACID: "acid", TRAINED: "known to the model: no test"}
     y, x = TOP + SIDE + 78, LEFT
     parts = []
     for supported, word in ((True, "supported"), (False, "extrapolated")):

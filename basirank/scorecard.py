@@ -16,6 +16,7 @@ from .prediction import predict
 from .request import PLAIN, Request
 from .scoring import APART, Figures, Group, Score, Scored
 from .writers import aligned_table
+from .scoring import APART, KNOWN, Figures, Group, Score, Scored
 
 COLUMNS = ("row", "name", "smiles", "status", "message", "kind", "step", "measured", "predicted", "error", "low",
            "high", "inside", "class", "family", "support", "in_training", "remark")  # fmt: skip
@@ -48,7 +49,7 @@ def score_rows(score: Score) -> list[list[str]]:
         rows[of.number] = [
             str(of.number), of.name, text_of(of.structure), "scored", "", of.kind, step, f"{of.value:g}",
             f"{row.predicted:z.2f}", f"{row.error:z.2f}", *(f"{end:z.2f}" for end in ends),
-            _yes(row.inside), row.site_class, row.family, row.support, _yes(row.trained), row.remark,
+            _yes(row.inside), row.site_class, row.family, row.support, _yes(bool(row.known)), row.remark,
         ]  # fmt: skip
     return [rows[number] for number in sorted(rows)]
 
@@ -116,13 +117,16 @@ def remarks(score: Score) -> list[str]:
                         f"order of {one.label}{words}: {100 * found.order:.1f} % of {found.pairs:,} pairs measured "
                         f"more than {APART} apart (first constants, n {found.first:,})"
                     )
-    trained = sum(row.trained for row in score.rows)
+    trained = sum(row.known == "training" for row in score.rows)
     if trained:
         lines.append(
             f"{trained:,} of {len(score.rows):,} values belong to compounds in the training table: those are no test"
         )
     if score.local:
-        lines.append("local corrections took part: rows they were conditioned on are no test")
+        own = sum(row.known == "local" for row in score.rows)
+        lines.append(
+            f"local corrections took part; {own:,} values belong to compounds they come from: no test"
+        )
     if score.assumed:
         lines.append(f"the column {score.value_column!r} was taken as {score.assumed}")
     nearer = sum("lies nearer" in row.remark for row in score.rows)
@@ -158,8 +162,8 @@ def score_text(score: Score, worst: int = 10) -> str:
 def _worst_line(row: Scored) -> list[str]:
     of = row.measured
     notes = [row.remark] if row.remark else []
-    if row.trained:
-        notes.insert(0, "in the training table")
+    if row.known:
+        notes.insert(0, KNOWN[row.known])
     return [
         f"{row.error:+z.2f}", f"{of.value:.2f}", f"{row.predicted:.2f}", f"{row.half_width:.2f}", str(of.number),
         of.name or text_of(of.structure), row.site_class, row.support, "; ".join(notes),
@@ -258,10 +262,10 @@ def _case(row: Scored, told: Explanation) -> str:
     of = row.measured
     low, high = row.predicted - row.half_width, row.predicted + row.half_width
     where = f"{of.wanted} on atom {row.atom}: {row.site_class}, {row.support}"
-    trained = ", in the training table" if row.trained else ""
+    known = f", {KNOWN[row.known]}" if row.known else ""
     lines = [
         f"<b>{row.error:+z.2f}</b>: measured {of.value:.2f}, predicted {row.predicted:.2f} ({low:.2f} to {high:.2f})",
-        _escaped(where + trained),
+        _escaped(where + known),
         *([_escaped(row.remark)] if row.remark else []),
         f"<small>{_escaped(text_of(of.structure))}</small>",
     ]

@@ -34,6 +34,13 @@ MUCH_BETTER = 1.0
 """A step that lies nearer to the measured value than the stated one by more than this is named [pK units]."""
 
 
+KNOWN = {
+    "": "not in the training table",
+    "training": "in the training table",
+    "local": "among the local measurements",
+}
+
+
 @dataclass(frozen=True, slots=True)
 class Scored:
     """One measured constant beside its prediction.
@@ -49,8 +56,9 @@ class Scored:
         Macroscopic constant and half of its 90 % interval [-].
     support : str
         `supported` or `extrapolated`.
-    trained : bool
-        Whether the compound stands in the training table.
+    known : {"", "training", "local"}
+        Whether the compound stands in the training table, or among the measurements of the local corrections: what
+        the model has seen is no test.
     remark : str
     """
 
@@ -61,7 +69,7 @@ class Scored:
     predicted: float
     half_width: float
     support: str
-    trained: bool
+    known: str
     remark: str
 
     @property
@@ -123,7 +131,7 @@ class Group:
     label : str
     figures : Figures
     new : Figures
-        Of those whose compound is not in the training table.
+        Of those whose compound is not in the training table (nor among the local measurements).
     """
 
     kind: str
@@ -189,6 +197,7 @@ def by_number(prediction: Prediction, kind: str, step: int) -> Step | None:
 def compare(rows: Iterable[Measured], local: LocalModel | None = None) -> list[Scored | Unused]:
     """Each measured constant beside the predicted step that its row states, in order; or why there is none."""
     listed = list(rows)
+    own = compound_keys(*(one.structure for one in local.measurements)) if local is not None else frozenset()
     groups: dict[Conditions, list[int]] = defaultdict(list)
     for n, row in enumerate(listed):
         groups[row.conditions].append(n)
@@ -198,11 +207,11 @@ def compare(rows: Iterable[Measured], local: LocalModel | None = None) -> list[S
             part = places[start : start + CHUNK]
             predictions = predict([listed[n].structure for n in part], conditions=conditions, local=local)
             for n, prediction in zip(part, predictions, strict=True):
-                found[n] = _compared(listed[n], prediction)
+                found[n] = _compared(listed[n], prediction, own)
     return [found[n] for n in range(len(listed))]
 
 
-def _compared(row: Measured, prediction: Prediction) -> Scored | Unused:
+def _compared(row: Measured, prediction: Prediction, own: frozenset[str]) -> Scored | Unused:
     if prediction.equilibrium is None or prediction.parent is None:
         return Unused(row.number, row.structure, row.name, prediction.message)
     if row.acid_charge is not None:
@@ -214,9 +223,10 @@ def _compared(row: Measured, prediction: Prediction) -> Scored | Unused:
     estimate = prediction.estimates[step.carrier]
     site = estimate.site
     keys = compound_keys(row.structure, prediction.parent.mol)
+    known = "local" if keys & own else "training" if keys & trained_compounds() else ""
     return Scored(
         row, site.site_class, site.row.family, prediction.parent.atom_index[site.atom], step.value, step.half_width,
-        estimate.support, not keys.isdisjoint(trained_compounds()), _remark(row, prediction, step),
+        estimate.support, known, _remark(row, prediction, step),
     )  # fmt: skip
 
 
@@ -280,7 +290,7 @@ def figures_of(rows: Sequence[Scored]) -> Figures:
 
 
 _PARTS: tuple[tuple[str, Callable[[Scored], str]], ...] = (
-    ("training", lambda row: "in the training table" if row.trained else "not in the training table"),
+    ("training", lambda row: KNOWN[row.known]),
     ("support", lambda row: row.support),
     ("class", lambda row: row.site_class),
     ("family", lambda row: row.family),
@@ -308,7 +318,7 @@ def groups_of(rows: Sequence[Scored]) -> tuple[Group, ...]:
 
 
 def _group(kind: str, by: str, label: str, rows: Sequence[Scored]) -> Group:
-    return Group(kind, by, label, figures_of(rows), figures_of([row for row in rows if not row.trained]))
+    return Group(kind, by, label, figures_of(rows), figures_of([row for row in rows if not row.known]))
 
 
 def scored(

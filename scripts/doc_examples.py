@@ -1,7 +1,8 @@
 """Examples of the documentation: run where they stand, so that what a page shows is what a user gets.
 
 A page is renewed by running its fenced blocks in order in a folder of its own, which holds the demo list as
-`data/demo.smi`, `list.smi`, `list.csv`, `library.csv.gz` and (twenty of them) `library.sdf`, and `parts/`:
+`data/demo.smi`, `list.smi`, `list.csv`, `library.csv.gz` and (twenty of them) `library.sdf`, and `parts/`,
+and forty rows of the check values as `measured.csv`:
 
 - ```console: lines after `$ ` are run, and what they print takes the place of what stood there. A line `...` in an
   output stands for lines left out: as many lines as before it and after it are kept.
@@ -62,6 +63,8 @@ def workplace() -> Iterator[Path]:
                 mol = Chem.MolFromSmiles(smiles)
                 mol.SetProp("_Name", label)
                 writer.write(mol)
+        values = (ROOT / "data" / "check_values.csv").read_text(encoding="utf-8").splitlines(True)[:41]
+        (folder / "measured.csv").write_text("".join(values), encoding="utf-8")
         (folder / "parts").mkdir()
         pd.DataFrame(rows, columns=["smiles", "name"]).to_parquet(folder / "parts" / "part-0.parquet")
         with chdir(folder):

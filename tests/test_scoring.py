@@ -23,10 +23,10 @@ ROOT = Path(__file__).resolve().parent.parent
 
 
 def row(measured: float, predicted: float, half_width: float = 1.0, **given: object) -> Scored:
-    trained = bool(given.pop("trained", False))
+    known = "training" if given.pop("trained", False) else ""
     support = str(given.pop("support", "supported"))
     one = Measured(1, "CCN", measured, **given)  # type: ignore[arg-type]
-    return Scored(one, "amine", "primary", 0, predicted, half_width, support, trained, "")
+    return Scored(one, "amine", "primary", 0, predicted, half_width, support, known, "")
 
 
 def predicted_of(smiles: str, column: str = "pkah_1") -> float:
@@ -80,7 +80,7 @@ def test_groups_tell_training_table_support_and_class_apart():
 
 def test_compounds_of_the_training_table_are_known_also_as_salts_and_other_drawings():
     frame = pd.DataFrame({"smiles": ["CC(=N)N", "CC(N)=[NH2+].[Cl-]", "FC(F)CCNCC1CCOC1"], "pkah": 12.4})
-    assert [one.trained for one in basirank.score(frame).rows] == [True, True, False]
+    assert [bool(one.known) for one in basirank.score(frame).rows] == [True, True, False]
 
 
 def test_a_value_is_scored_at_the_step_that_its_row_states():
@@ -121,6 +121,8 @@ def test_local_corrections_take_part_and_are_said_to():
     before, after = basirank.score(frame), basirank.score(frame, local=series)
     assert after.rows[0].predicted != before.rows[0].predicted
     assert after.local and not before.local
+    both = pd.DataFrame({"smiles": ["Fc1ccc(CN2CCN3CCOC3C2)cc1", *frame["smiles"]], "pkah": [7.0, 6.95]})
+    assert [one.known for one in basirank.score(both, local=series).rows] == ["local", ""]
 
 
 BAD = """Name,SMILES,pKaH,kind,step,temperature
