@@ -26,7 +26,7 @@ _IONIC_METALS = frozenset({3, 4, 11, 12, 19, 20, 37, 38, 55, 56})
 # A bracket atom other than a stereo carbon and pyrrole N-H: its element, charge, radical or isotope must be
 # looked at.
 _UNUSUAL_ATOM = re.compile(r"\[(?!C@@?H?\]|nH\])|\*")
-_CARBON_OR_NITROGEN = re.compile(r"[Nnc]|C(?!l)")
+_CARBON = re.compile(r"c|C(?!l)")
 _DUMMY = rdqueries.AtomNumEqualsQueryAtom(0)
 _RADICAL = rdqueries.NumRadicalElectronsGreaterQueryAtom(0)
 _ATOM_MAP = re.compile(r":\d+\]")
@@ -120,7 +120,7 @@ def _from_text(text: str) -> Parent:
             raise Refusal(_parse_failure(smiles))
     if _UNUSUAL_ATOM.search(smiles):
         return _finished(mol, index, smiles, charged="+" in smiles or "-" in smiles, plain=False)
-    if not _CARBON_OR_NITROGEN.search(smiles):
+    if not _CARBON.search(smiles) and not is_organic(mol):
         raise Refusal("no organic part")
     return _finished(mol, index, smiles, charged=False, plain=True)
 

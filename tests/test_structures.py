@@ -540,3 +540,20 @@ def test_an_ion_of_ammonia_is_ammonia(text):
 def test_a_bond_to_sodium_that_leaves_no_sound_ion_is_refused(text):
     with pytest.raises(Refusal, match="no sound structure"):
         read_parent(text)
+
+
+@pytest.mark.parametrize(
+    "smiles", ["N#N", "ClN(Cl)Cl", "O=NO", "FN=NF", "N", "NN", "NO", "NCl", "O", "N#N.N", "S=C=S"]
+)
+def test_what_holds_no_carbon_gets_one_answer_as_text_and_as_molecule(smiles):
+    def answer(structure):
+        try:
+            return read_parent(structure).smiles
+        except Refusal as reason:
+            return str(reason)
+
+    assert answer(smiles) == answer(Chem.MolFromSmiles(smiles))
+    if smiles in ("N#N", "O"):
+        assert answer(smiles) == "no organic part"
+    if smiles in ("N", "NN", "NO"):
+        assert answer(smiles) == smiles

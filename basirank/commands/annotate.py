@@ -41,13 +41,13 @@ REASONS_SHOWN = 5  # reasons of refusal on standard error
     "--jobs",
     type=click.IntRange(1),
     metavar="N",
-    help="Worker processes. [default: one for each core, none for a short list]",
+    help="Worker processes on this machine; not with --cluster. [default: one for each core, none for a short list]",
 )
 @click.option(
     "--patience",
     type=click.FloatRange(0.0, min_open=True),
     metavar="SECONDS",
-    help=f"Refuse a row that takes a worker longer. [default: {PATIENCE:g}]",
+    help=f"Refuse a row that takes a worker on this machine longer; not with --cluster. [default: {PATIENCE:g}]",
 )
 @click.option("--cluster", metavar="ADDRESS", help="Compute on the workers of this Dask scheduler.")
 @click.option(
@@ -71,7 +71,9 @@ def command(
     after an interruption the same command goes on from where it was.
     """
     if cluster is not None and (jobs is not None or patience is not None):
-        raise click.UsageError("--jobs and --patience are for this machine, --cluster is for others")
+        raise click.UsageError(
+            "--jobs and --patience are for workers of this machine; with --cluster its scheduler decides"
+        )
     target = output or STDOUT
     values = checked(ph, output, inputs, OUTPUT_ENDINGS)
     if summary is not None:
