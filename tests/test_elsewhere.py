@@ -113,3 +113,14 @@ def test_spark_maps_partitions(folder):
         expected.astype(object).where(expected.notna(), None),
         check_dtype=False,
     )
+
+
+def test_a_mapped_dask_frame_has_the_types_that_its_empty_part_says():
+    frames = pytest.importorskip("dask.dataframe")
+    frame = pd.DataFrame({"id": [1, 2, 3], "smiles": ["CCN", "nonsense(", "c1ccncc1"]})
+    library = frames.from_pandas(frame, npartitions=2)
+    meta = basirank.annotate_frame(library.head(0))
+    mapped = library.map_partitions(basirank.annotate_frame, meta=meta)
+    found = mapped.compute(scheduler="sync")
+    assert meta.empty and found.dtypes.to_dict() == meta.dtypes.to_dict() == mapped.dtypes.to_dict()
+    assert found["pkah_1"].equals(basirank.annotate_frame(frame)["pkah_1"])
