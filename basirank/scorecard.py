@@ -120,7 +120,7 @@ def remarks(score: Score) -> list[str]:
     trained = sum(row.known == "training" for row in score.rows)
     if trained:
         lines.append(
-            f"{trained:,} of {len(score.rows):,} values belong to compounds in the training table: those are no test"
+            f"{trained:,} of {len(score.rows):,} values belong to compounds in the training table: no test ('new' leaves them out)"
         )
     if score.local:
         own = sum(row.known == "local" for row in score.rows)
@@ -131,9 +131,7 @@ def remarks(score: Score) -> list[str]:
         lines.append(f"the column {score.value_column!r} was taken as {score.assumed}")
     nearer = sum("lies nearer" in row.remark for row in score.rows)
     if nearer:
-        lines.append(
-            f"{nearer:,} values lie much nearer to another step than to the stated one (see the remarks)"
-        )
+        lines.append(f"much nearer to another step than to the stated one: {nearer:,} (see the remarks)")
     return lines
 
 
