@@ -120,7 +120,7 @@ def remarks(score: Score) -> list[str]:
     trained = sum(row.known == "training" for row in score.rows)
     if trained:
         lines.append(
-            f"{trained:,} of {len(score.rows):,} values belong to compounds in the training table: no test ('new' leaves them out)"
+            f"in the training table: compounds of {trained:,} of {len(score.rows):,} values ('new' leaves them out)"
         )
     if score.local:
         own = sum(row.known == "local" for row in score.rows)
