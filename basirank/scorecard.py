@@ -14,9 +14,8 @@ from .markdown import code, plain, table
 from .parity import parity_svg
 from .prediction import predict
 from .request import PLAIN, Request
-from .scoring import APART, Figures, Group, Score, Scored
-from .writers import aligned_table
 from .scoring import APART, KNOWN, Figures, Group, Score, Scored
+from .writers import aligned_table
 
 COLUMNS = ("row", "name", "smiles", "status", "message", "kind", "step", "measured", "predicted", "error", "low",
            "high", "inside", "class", "family", "support", "in_training", "remark")  # fmt: skip
