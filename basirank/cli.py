@@ -32,6 +32,8 @@ COMMANDS = {
     "calibrate": "Learn from own measured constants: a local model for the other commands.",
     "score": "Compare a table of measured constants with the predicted ones.",
     "titrate": "Titration curve of a compound or its salt, with equivalence points.",
+    "workup": "Acid-base extraction: pH into water and back, and the washes that separate a mixture.",
+    "salts": "Counter-ions ranked for a salt, pH of maximum solubility, solubility against pH.",
 }
 """Each command with its line in the help; its module in `basirank.commands` has the same name."""
 

@@ -21,6 +21,7 @@ from .request import STANDARD, Conditions, within
 
 if TYPE_CHECKING:
     import pandas as pd
+    from rdkit import Chem
 
     from .conditioning import LocalModel
 
@@ -100,7 +101,22 @@ def ph_grid(low: float = 0.0, high: float = 14.0, step: float = 0.1) -> Floats:
     return np.round(low + step * np.arange(count), 6)
 
 
-def log_d(log_p: float, neutral: Floats, cation: Floats, anion: Floats) -> Floats:
+def estimated_log_p(mol: Chem.Mol) -> float:
+    """log P of a neutral form from atom contributions [-]: Wildman and Crippen 1999, as in RDKit."""
+    from rdkit.Chem import Crippen
+
+    return float(Crippen.MolLogP(mol))  # type: ignore[attr-defined]
+
+
+def log_d(
+    log_p: float,
+    neutral: Floats,
+    cation: Floats,
+    anion: Floats,
+    *,
+    cation_below: float = CATION_BELOW,
+    anion_below: float = ANION_BELOW,
+) -> Floats:
     r"""Logarithm of the distribution coefficient.
 
     .. math:: D = P\,(f_0 + 10^{-3} f_{+} + 10^{-4} f_{-})
@@ -112,6 +128,8 @@ def log_d(log_p: float, neutral: Floats, cation: Floats, anion: Floats) -> Float
     neutral, cation, anion : ndarray
         Shares of the neutral form, of molecules of net charge +1 and of net charge -1. The zwitterion and ions
         of higher charge count as staying in water.
+    cation_below, anion_below : float
+        log P of an ion pair below that of the neutral form [-].
 
     Returns
     -------
@@ -129,7 +147,7 @@ def log_d(log_p: float, neutral: Floats, cation: Floats, anion: Floats) -> Float
     ----------
     .. [1] Avdeef, Absorption and Drug Development, Wiley 2003, chapter 4 (memory).
     """
-    free = neutral + 10.0**-CATION_BELOW * cation + 10.0**-ANION_BELOW * anion
+    free = neutral + 10.0**-cation_below * cation + 10.0**-anion_below * anion
     value = log_p + np.log10(np.maximum(free, 1e-30))
     return np.asarray(np.where(value < LOWEST_LOG_D, np.nan, value))
 
@@ -177,9 +195,7 @@ def _curve(found: Prediction, name: str, structure: str, ph: Floats, log_p: floa
     neutral = np.array([state.neutral_fraction for state in states])
     estimated = log_p is None and found.sites.fixed_charge == 0
     if estimated:
-        from rdkit.Chem import Crippen
-
-        log_p = float(Crippen.MolLogP(found.parent.mol))  # type: ignore[attr-defined]
+        log_p = estimated_log_p(found.parent.mol)
     along = {n + ladder.bare_charge: by_charge[:, n] for n in range(by_charge.shape[1])}
     nothing = np.zeros(len(ph))
     return Curve(

@@ -11,6 +11,7 @@ from .plots import Line, Mark, Panel, svg
 
 if TYPE_CHECKING:
     from .curves import Curve
+    from .extraction import Workup
     from .titration import Titration
 
 MOST_COMPOUNDS = 6  # of one picture: past that neither colours nor labels stay apart
@@ -94,6 +95,53 @@ def titration_figure(done: Titration, name: str, note: str = "") -> str:
     )
     label = "volume of titrant / mL" + (f"  ({note})" if note else "")
     return svg([panel], x_label=label, x_range=(0.0, float(done.volume[-1])), title=_short(name))
+
+
+def workup_figure(done: Workup, note: str = "") -> str:
+    """Shares in the organic layer and out of the water against pH as an SVG, the chosen pH values marked.
+
+    Parameters
+    ----------
+    done : Workup
+        One to six compounds that can be computed.
+    note : str
+        Conditions, beside the name of the axis.
+
+    Raises
+    ------
+    ValueError
+        None, or more than six.
+    """
+    drawn = [one for one in done.compounds if one.partition is not None]
+    if not 0 < len(drawn) <= MOST_COMPOUNDS:
+        raise ValueError(f"a picture holds 1 to {MOST_COMPOUNDS} compounds, not {len(drawn)}")
+    setting, ph = done.setting, done.setting.grid(0.05)
+    names = [_short(one.name or one.structure) for one in drawn]
+    alone = len(drawn) == 1
+    stays, returns = [], []
+    for n, one in enumerate(drawn):
+        assert one.partition is not None
+        coefficient = one.partition.coefficients(ph)[0]
+        name = "" if alone else names[n]
+        stays.append(Line(name, ph, 100.0 * setting.stays(coefficient), n))
+        returns.append(Line(name, ph, 100.0 * setting.returns(coefficient), n))
+    washes, back = [], []
+    if done.plan is not None:
+        for n, (value, values) in enumerate(zip(done.plan.washes, done.plan.returns, strict=True), start=1):
+            washes.append(Mark(value, f"wash {n}, pH {value:g}"))
+            back += [Mark(other, f"water {n}, pH {other:g}") for other in values]
+    elif alone:
+        washes = [Mark(goes.ph, f"pH {goes.ph:.1f}") for goes in (drawn[0].into_water,) if goes and goes.ph]
+        back = [Mark(goes.ph, f"pH {goes.ph:.1f}") for goes in (drawn[0].back,) if goes and goes.ph]
+    portions = f"{setting.washes} x {setting.aqueous:g} mL of water, {setting.organic:g} mL of solvent"
+    label = "pH  (" + "; ".join(part for part in (portions, note) if part) + ")"
+    panels = [
+        Panel("Washing: what stays in the organic layer", "share / %", stays, (0.0, 100.0), washes, 250.0),
+        Panel("Back: what comes out of the water", "share / %", returns, (0.0, 100.0), back, 250.0),
+    ]
+    return svg(
+        panels, x_label=label, x_range=(setting.lowest, setting.highest), title=names[0] if alone else ""
+    )
 
 
 def charge_name(charge: int) -> str:
