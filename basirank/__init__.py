@@ -15,9 +15,11 @@ if TYPE_CHECKING:
     from .curves import curve
     from .display import show
     from .explanation import Explanation, explain
+    from .extraction import Workup, workup
     from .features import BasicityFeatures
     from .local_models import read_local, save_local
     from .report import report_html
+    from .salt_selection import SaltSelection, counter_ions
     from .scoring import Score, score
     from .titration import Titration, titrate
 
@@ -29,13 +31,16 @@ __all__ = [
     "Explanation",
     "LocalModel",
     "Measurement",
+    "SaltSelection",
     "Score",
     "Titration",
+    "Workup",
     "__version__",
     "annotate",
     "annotate_frame",
     "calibrate",
     "condition",
+    "counter_ions",
     "curve",
     "explain",
     "rank",
@@ -45,6 +50,7 @@ __all__ = [
     "score",
     "show",
     "titrate",
+    "workup",
 ]
 
 _HOMES = {
@@ -64,6 +70,10 @@ _HOMES = {
     "Explanation": "explanation",
     "titrate": "titration",
     "Titration": "titration",
+    "workup": "extraction",
+    "Workup": "extraction",
+    "counter_ions": "salt_selection",
+    "SaltSelection": "salt_selection",
     "report_html": "report",
     "score": "scoring",
     "Score": "scoring",

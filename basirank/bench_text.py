@@ -153,7 +153,7 @@ def _remarks(sound: Sequence[Compound]) -> list[str]:
     """What there is to say of each compound, a paragraph for each."""
     lines = []
     for one in sound:
-        said = [*_own(one.message), *one.cautions]
+        said = [*own_remarks(one.message), *one.cautions]
         said += map(str, one.hazards)
         if said:
             text = f"{printable(label(one))}: {'; '.join(said)}"
@@ -161,7 +161,7 @@ def _remarks(sound: Sequence[Compound]) -> list[str]:
     return ["", *lines] if lines else []
 
 
-def _own(message: str) -> list[str]:
+def own_remarks(message: str) -> list[str]:
     """The remarks that are about the compound, not about the call or what stands beside them anyway."""
     return [
         part for part in message.split("; ") if part and not part.startswith(("at ", "no nitrogen takes"))
@@ -235,7 +235,7 @@ def workup_cells(done: Workup) -> list[list[str]]:
             rows.append(["refused", one.message, *[""] * (len(COLUMNS) - 2)])
             continue
         log_p = one.partition.log_p
-        row = ["ok", "; ".join([*_own(one.message), *one.cautions]), one.kind]
+        row = ["ok", "; ".join([*own_remarks(one.message), *one.cautions]), one.kind]
         row += ["", ""] if log_p is None else [f"{log_p:.2f}", "estimated" if one.estimated else "given"]
         for reach in (one.into_water, one.back):
             assert reach is not None

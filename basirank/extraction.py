@@ -205,8 +205,13 @@ def workup(
     names: Sequence[str] | None = None,
     log_p: Sequence[float | None] | None = None,
     amounts: Sequence[float] | None = None,
-    setting: Setting | None = None,
     mixture: bool = True,
+    aim: float = 0.99,
+    aqueous: float = 50.0,
+    organic: float = 50.0,
+    washes: int = 2,
+    ph_range: tuple[float, float] = (1.0, 13.0),
+    ion_pairs: tuple[float, float] = ION_PAIRS,
     temperature: float = 25.0,
     ionic_strength: float = 0.0,
     local: LocalModel | None = None,
@@ -222,10 +227,18 @@ def workup(
         log P of each neutral form [-]; estimated from atom contributions (Wildman and Crippen 1999) where not given.
     amounts : sequence of float, optional
         Amount of each in the mixture, in any unit of amount of substance; equal when not given.
-    setting : Setting, optional
-        Volumes, number of washes, limits; `Setting()` when not given.
     mixture : bool
         Whether to look for the washes that separate them (2 to 12 compounds).
+    aim : float
+        Share that shall go over [-], 0.5 to 0.99999.
+    aqueous, organic : float
+        Volume of each portion of water; of the organic layer and of each portion of solvent [mL].
+    washes : int
+        Number of portions, 1 to 20.
+    ph_range : tuple of float
+        pH limits, 0 to 14.
+    ion_pairs : tuple of float
+        log P of the ion pair of a cation and of an anion below that of the neutral form [-].
     temperature, ionic_strength : float
         [C], 0 to 60; [mol/L], 0 to 0.5.
     local : LocalModel, optional
@@ -250,7 +263,7 @@ def workup(
     from rdkit import Chem
 
     listed: list[Any] = [structures] if isinstance(structures, str | Chem.Mol) else list(structures)
-    setting = Setting() if setting is None else setting
+    setting = Setting(aim, aqueous, organic, washes, *ph_range, ion_pairs)
     conditions = Conditions(temperature, ionic_strength)
     count = len(listed)
     for name, given in (("names", names), ("log P values", log_p), ("amounts", amounts)):

@@ -12,12 +12,14 @@ from .plots import Line, Mark, Panel, svg
 if TYPE_CHECKING:
     from .curves import Curve
     from .extraction import Workup
+    from .salt_selection import SaltSelection
     from .titration import Titration
 
 MOST_COMPOUNDS = 6  # of one picture: past that neither colours nor labels stay apart
 FORM_SHOWN = 0.01  # least share, somewhere, of a form that has a curve
 DRAWN = 0.0003  # share below which a form has no curve: it would lie on the axis
 NAME_LENGTH = 40
+MOST_DECADES = 8.0  # of a solubility: no solution follows the equation further
 MINUS = "\N{MINUS SIGN}"
 QUANTITIES = ("forms", "charge", "logd")
 
@@ -142,6 +144,48 @@ def workup_figure(done: Workup, note: str = "") -> str:
     return svg(
         panels, x_label=label, x_range=(setting.lowest, setting.highest), title=names[0] if alone else ""
     )
+
+
+def solubility_figure(found: Sequence[SaltSelection], note: str = "") -> str:
+    """Solubility against pH as an SVG, the pH of maximum solubility marked.
+
+    Parameters
+    ----------
+    found : sequence of SaltSelection
+        One to six that have a solubility; of one whose intrinsic solubility is not known the relative one is shown.
+    note : str
+        Conditions, beside the name of the axis.
+
+    Raises
+    ------
+    ValueError
+        None, or more than six.
+    """
+    drawn = [(one, one.dissolution) for one in found if one.dissolution is not None]
+    if not 0 < len(drawn) <= MOST_COMPOUNDS:
+        raise ValueError(f"a picture holds 1 to {MOST_COMPOUNDS} compounds that make salts, not {len(drawn)}")
+    ph = np.linspace(0.0, 14.0, 561)
+    names = [_short(one.name or one.structure) for one, _ in drawn]
+    known, alone = drawn[0][0].known, len(drawn) == 1
+    lines, marks = [], []
+    for n, (name, (_, solution)) in enumerate(zip(names, drawn, strict=True)):
+        scale = solution.molar_mass if known else 1.0
+        lines.append(Line("" if alone else name, ph, np.log10(solution.at(ph) * scale), n))
+        if solution.ph_max is not None:
+            value = solution.ph_max[0]
+            level = float(np.log10(solution.at([value])[0] * scale))
+            marks.append(Mark(value, f"pH of maximum solubility {value:.2f}".replace("-", MINUS), level))
+    low, high = _whole(lines)
+    panel = Panel(
+        "",
+        "log (S / mg/mL)" if known else "log (S / S of no net charge)",
+        lines,
+        (low, min(high, low + MOST_DECADES)),
+        [mark for mark in marks if 0.0 <= mark.x <= 14.0],
+        420.0,
+    )
+    label = "pH" + (f"  ({note})" if note else "")
+    return svg([panel], x_label=label, x_range=(0.0, 14.0), title=names[0] if alone else "")
 
 
 def charge_name(charge: int) -> str:

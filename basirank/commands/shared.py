@@ -26,6 +26,7 @@ __all__ = [
     "Picture",
     "Progress",
     "batches_of",
+    "check_document",
     "check_picture",
     "checked",
     "counted",
@@ -218,6 +219,14 @@ def check_picture(output: str, inputs: Sequence[str]) -> Picture | None:
 
         png_ready()
     return Picture(ending == ".png") if ending in PICTURE_ENDINGS else None
+
+
+def check_document(output: str | None, inputs: Sequence[str]) -> Picture | None:
+    """The same where JSON may be asked for too, and text goes to the terminal: None for all that is no picture."""
+    if output is None or output == STDOUT or os.path.splitext(output)[1].lower() in PICTURE_ENDINGS:
+        return None if output is None else check_picture(output, inputs)
+    check_output(output, inputs, (*TABLE_ENDINGS, ".json", *PICTURE_ENDINGS))
+    return None
 
 
 def quiet_rdkit() -> None:

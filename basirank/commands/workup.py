@@ -15,12 +15,10 @@ from ..batch.compute import with_smiles
 from ..readers import InputError, Row, Table, open_table
 from ..records import Column, unclashed
 from ..request import STANDARD, Request, within
-from ..writers import STDOUT, TABLE_ENDINGS, TableWriter, check_output, open_output
+from ..writers import STDOUT, TableWriter, open_output
 from .shared import (
-    PICTURE_ENDINGS,
     WRONG_INPUT,
-    Picture,
-    check_picture,
+    check_document,
     input_options,
     label_place,
     quiet_rdkit,
@@ -87,7 +85,7 @@ def command(
     recovery and purity of each, and said to be impossible where pH alone cannot do it. log P is estimated from
     atom contributions (Wildman and Crippen 1999) unless a column gives it.
     """  # fmt: skip
-    picture = _checked(output, inputs)
+    picture = check_document(output, inputs)
     from ..extraction import Setting, workup_of
 
     try:
@@ -131,13 +129,6 @@ def command(
             if one.partition is None:
                 say(f"{one.name or one.structure or 'a row'}: refused: {one.message}")
     return 0 if statuses["ok"] else WRONG_INPUT
-
-
-def _checked(output: str | None, inputs: Sequence[str]) -> Picture | None:
-    if output is None or output.lower().endswith(".json"):
-        check_output(output or STDOUT, inputs, (*TABLE_ENDINGS, ".json", *PICTURE_ENDINGS))
-        return None
-    return check_picture(output, inputs)
 
 
 def _entries(
