@@ -176,6 +176,7 @@ def _plan_text(plan: Plan, compounds: Sequence[Compound]) -> list[str]:
         else "No wash separates anything: all stay together in the organic layer"
     ]
     if steps:
+        lines[0] += f": {plan.separated} of {len(plan.places)} compounds separated"
         lines[0] += f"; worst recovery x purity {plan.worst:.2f}"
     rows = []
     for wash, (ph, returns) in enumerate(zip(plan.washes, plan.returns, strict=True), start=1):
@@ -195,11 +196,12 @@ def _plan_text(plan: Plan, compounds: Sequence[Compound]) -> list[str]:
             text = f"  {printable(label(compounds[one.compound]))}: {one.why}"
             lines += textwrap.wrap(text, WIDTH, subsequent_indent="    ")
     for one in plan.places:
-        for ph in (*plan.washes[: one.wash], *(() if one.back_ph is None else (one.back_ph,))):
-            for group in compounds[one.compound].hazards:
-                if group.at(ph):
-                    name = printable(label(compounds[one.compound]))
-                    lines += textwrap.wrap(f"  Mind: {name} meets pH {ph:g}; {group}", WIDTH)
+        met = [*plan.washes[: one.wash], *(() if one.back_ph is None else (one.back_ph,))]
+        for group in compounds[one.compound].hazards:
+            if reacts := [f"{ph:g}" for ph in met if group.at(ph)]:
+                name = printable(label(compounds[one.compound]))
+                text = f"Mind: {name} meets pH {' and '.join(reacts)}; {group}"
+                lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent="    ")
     return lines
 
 
@@ -323,6 +325,7 @@ def _plan_dict(plan: Plan, compounds: Sequence[Compound]) -> dict[str, Any]:
         "washes": [
             {"ph": ph, "return_ph": list(back)} for ph, back in zip(plan.washes, plan.returns, strict=True)
         ],
+        "separated": plan.separated,
         "worst_recovery_x_purity": round(plan.worst, 4),
         "compounds": [
             {

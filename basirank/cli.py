@@ -46,6 +46,8 @@ Examples:
   basirank explain "OC(=O)CN"
   basirank curve "OC(=O)CN glycine" -o glycine.svg
   basirank titrate "CCN.Cl" --concentration 0.05
+  basirank workup mixture.smi
+  basirank salts CCN --top 10
   basirank report list.smi -o report.html
 """
 

@@ -9,7 +9,7 @@ error of log P comes on top.
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -34,6 +34,7 @@ AIM_RANGE = (0.5, 0.99999)
 PH_LIMITS = (0.0, 14.0)
 ION_PAIR_RANGE = (0.0, 20.0)  # log P units below the neutral form
 AMOUNT_RANGE = (1e-12, 1e12)
+NO_ION_PAIRS = (20.0, 20.0)
 FINE = 0.01  # step of the pH in the reach of one compound
 VOLATILE = 6  # heavy atoms up to which a neutral form may go with the solvent: common practice
 
@@ -318,6 +319,14 @@ def _compound(found: Prediction, entry: Entry, setting: Setting) -> Compound:
     kind: str = "amphoteric" if len(kinds) == 2 else kinds.pop() if kinds else "neutral"
     if found.sites.fixed_charge and kind == "neutral":
         kind = "permanent ion"
+    into_water = _into_water(partition, setting)
+    cautions = _cautions(partition, kind, found.parent.mol.GetNumHeavyAtoms())
+    if into_water.ph is None:
+        bare = _into_water(replace(partition, ion_pairs=NO_ION_PAIRS), setting)
+        if bare.ph is not None:
+            cautions += (
+                f"ion pairs hold it in the organic layer; without them (ether, toluene) pH {bare.ph:.1f} would do",
+            )
     return Compound(
         name=entry.name,
         structure=structure,
@@ -330,12 +339,16 @@ def _compound(found: Prediction, entry: Entry, setting: Setting) -> Compound:
         ),
         partition=partition,
         estimated=estimated,
-        into_water=reach(partition, setting, lambda d, n: 1.0 - setting.stays(d, n)),
+        into_water=into_water,
         back=reach(partition, setting, setting.returns),
         hazards=hazards_of(found.parent.mol, low, high),
-        cautions=_cautions(partition, kind, found.parent.mol.GetNumHeavyAtoms()),
+        cautions=cautions,
         amount=entry.amount,
     )
+
+
+def _into_water(partition: Partition, setting: Setting) -> Reach:
+    return reach(partition, setting, lambda d, n: 1.0 - setting.stays(d, n))
 
 
 def _cautions(partition: Partition, kind: str, heavy_atoms: int) -> tuple[str, ...]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -176,11 +177,13 @@ def solubility_figure(found: Sequence[SaltSelection], note: str = "") -> str:
             level = float(np.log10(solution.at([value])[0] * scale))
             marks.append(Mark(value, f"pH of maximum solubility {value:.2f}".replace("-", MINUS), level))
     low, high = _whole(lines)
+    high = min(high, low + MOST_DECADES)
+    lines = [replace(line, y=np.where(line.y > high, np.nan, line.y)) for line in lines]
     panel = Panel(
         "",
         "log (S / mg/mL)" if known else "log (S / S of no net charge)",
         lines,
-        (low, min(high, low + MOST_DECADES)),
+        (low, high),
         [mark for mark in marks if 0.0 <= mark.x <= 14.0],
         420.0,
     )

@@ -74,6 +74,11 @@ class Plan:
     places: tuple[Place, ...]
 
     @property
+    def separated(self) -> int:
+        """Number of compounds that the washes separate."""
+        return sum(not one.why for one in self.places)
+
+    @property
     def worst(self) -> float:
         """Recovery times purity of the compound that comes off worst [-]."""
         return min(one.recovery * one.purity for one in self.places)
@@ -155,6 +160,8 @@ def _why(n: int, places: Sequence[Place], parts: Sequence[Compound], washed: Mix
     name = parts[other].name or parts[other].structure
     if parts[n].kind == parts[other].kind == "neutral":
         return f"neither it nor {name} takes or gives a proton between the pH limits"
+    if max(stay[n].max(), stay[other].max()) < 1.0 - TOLD_APART:
+        return f"both it and {name} stay in water at any pH"
     where = f"{100 * apart[other]:.0f} % at pH {washed.ph[np.argmax(np.abs(stay[other] - stay[n]))]:g}"
     if apart[other] >= TOLD_APART:
         return f"with {name}: these two alone come apart ({where}), but not in one sequence with the others"

@@ -83,12 +83,14 @@ def command(
         quiet_rdkit()
         rows = with_smiles(list(islice(table.rows, MOST_ROWS + 1)))
         label = label_place(table)
+    if not rows:
+        raise InputError("no compound in the input")
     if len(rows) > MOST_ROWS:
         raise InputError(f"more than {MOST_ROWS:,} compounds: salts takes fewer")
     if solubility is not None and len(rows) != 1:
         raise InputError(f"--solubility is for one compound, not for {len(rows)}")
     from ..salt_selection import SaltSelection, selections_of
-    from ..salt_text import COLUMNS, NOTE, caution, selection_cells, selection_dict, selections_text
+    from ..salt_text import COLUMNS, NOTE, caution, no_salt, selection_cells, selection_dict, selections_text
 
     names = [row.cells[label] if label is not None else "" for row in rows]
     try:
@@ -138,4 +140,8 @@ def command(
     if output is not None:
         for one in refused:
             say(f"{one.name or one.structure or 'a row'}: refused: {one.message}")
+    if picture:
+        for one in found:
+            if one.steps is not None and not one.sides:
+                say(f"{one.name or one.structure}: {no_salt(one)}")
     return WRONG_INPUT if len(refused) == len(found) else 0

@@ -87,6 +87,7 @@ def command(
     """  # fmt: skip
     picture = check_document(output, inputs)
     from ..extraction import Setting, workup_of
+    from ..mixtures import MOST_COMPOUNDS
 
     try:
         setting = Setting(aim, aqueous, organic, washes, low, high, ion_pairs)  # type: ignore[arg-type]
@@ -95,6 +96,8 @@ def command(
     with open_table(inputs, smiles_column=smiles_column, stdin_format=stdin_format, warn=say) as table:
         quiet_rdkit()
         rows = with_smiles(list(islice(table.rows, MOST_ROWS + 1)))
+    if not rows:
+        raise InputError("no compound in the input")
     if len(rows) > MOST_ROWS:
         raise InputError(f"more than {MOST_ROWS:,} compounds: workup takes fewer")
     entries = _entries(rows, table, logp_column, amount_column)
@@ -128,6 +131,10 @@ def command(
         for one in done.compounds:
             if one.partition is None:
                 say(f"{one.name or one.structure or 'a row'}: refused: {one.message}")
+    if not alone and statuses["ok"] > MOST_COMPOUNDS:
+        say(
+            f"washes for a mixture are looked for among up to {MOST_COMPOUNDS} compounds, not {statuses['ok']}"
+        )
     return 0 if statuses["ok"] else WRONG_INPUT
 
 
