@@ -12,7 +12,7 @@ from .plots import Line, Mark, Panel, svg
 
 if TYPE_CHECKING:
     from .curves import Curve
-    from .extraction import Workup
+    from .extraction import Reach, Workup
     from .salt_selection import SaltSelection
     from .titration import Titration
 
@@ -128,14 +128,14 @@ def workup_figure(done: Workup, note: str = "") -> str:
         name = "" if alone else names[n]
         stays.append(Line(name, ph, 100.0 * setting.stays(coefficient), n))
         returns.append(Line(name, ph, 100.0 * setting.returns(coefficient), n))
-    washes, back = [], []
+    washes: list[Mark] = []
+    back: list[Mark] = []
     if done.plan is not None:
         for n, (value, values) in enumerate(zip(done.plan.washes, done.plan.returns, strict=True), start=1):
             washes.append(Mark(value, f"wash {n}, pH {value:g}"))
             back += [Mark(other, f"water {n}, pH {other:g}") for other in values]
     elif alone:
-        washes = [Mark(goes.ph, f"pH {goes.ph:.1f}") for goes in (drawn[0].into_water,) if goes and goes.ph]
-        back = [Mark(goes.ph, f"pH {goes.ph:.1f}") for goes in (drawn[0].back,) if goes and goes.ph]
+        washes, back = ([_reached(goes)] for goes in (drawn[0].into_water, drawn[0].back) if goes)
     portions = f"{setting.washes} x {setting.aqueous:g} mL of water, {setting.organic:g} mL of solvent"
     label = "pH  (" + "; ".join(part for part in (portions, note) if part) + ")"
     panels = [
@@ -145,6 +145,12 @@ def workup_figure(done: Workup, note: str = "") -> str:
     return svg(
         panels, x_label=label, x_range=(setting.lowest, setting.highest), title=names[0] if alone else ""
     )
+
+
+def _reached(goes: Reach) -> Mark:
+    if goes.ph is not None:
+        return Mark(goes.ph, f"pH {goes.ph:.1f}")
+    return Mark(goes.best_ph, f"at best {100 * goes.best:.0f} %, pH {goes.best_ph:.1f}")
 
 
 def solubility_figure(found: Sequence[SaltSelection], note: str = "") -> str:

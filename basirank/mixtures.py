@@ -154,7 +154,13 @@ def _why(n: int, places: Sequence[Place], parts: Sequence[Compound], washed: Mix
     ]
     lost = 1.0 - float(stay[n].max())
     log_p = parts[n].partition.log_p  # type: ignore[union-attr]
-    if log_p is not None and 0.1 < lost < RETURNS and not any(apart[k] < TOLD_APART for k in beside):
+    waits = places[n].wash != 1  # in the organic layer while the first wash takes its part
+    if (
+        waits
+        and log_p is not None
+        and 0.1 < lost < RETURNS
+        and not any(apart[k] < TOLD_APART for k in beside)
+    ):
         return f"the washes take {100 * lost:.0f} % of it at any pH (log P {log_p:.1f})"
     other = int(np.argmin(apart)) if not beside else min(beside, key=lambda k: float(apart[k]))
     name = parts[other].name or parts[other].structure

@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from .salt_selection import Candidate, SaltSelection, Side
 
 NAME_WIDTH = 72
+MOST_TOLD = 1_000_000  # ratio of solubilities beyond which the number means nothing
 USUAL_SALTS = (
     1.0,
     10.0,
@@ -159,7 +160,10 @@ def _dissolution_text(one: SaltSelection) -> list[str]:
         )
         lines += textwrap.wrap(f"Solubility: {told}", WIDTH)
     else:
-        told = ", ".join(f"{value:.3g} at pH {ph:g}" for ph, value in zip(one.media, values, strict=True))
+        told = ", ".join(
+            f"{f'{value:.3g}' if value < MOST_TOLD else f'over {MOST_TOLD:,}'} at pH {ph:g}"
+            for ph, value in zip(one.media, values, strict=True)
+        )
         text = f"Solubility of the free form over that without net charge: {told}"
         lines += textwrap.wrap(f"{text} (as far as it is the solid; --solubility gives more)", WIDTH)
         return lines
