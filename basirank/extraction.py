@@ -258,8 +258,8 @@ def workup(
     Examples
     --------
     >>> done = workup(["OC(=O)c1ccccc1", "Nc1ccccc1", "c1ccc2ccccc2c1"])
-    >>> [one.kind for one in done.compounds], done.plan.washes
-    (['acid', 'base', 'neutral'], (2.0, 7.5))
+    >>> [one.kind for one in done.compounds], len(done.plan.washes)
+    (['acid', 'base', 'neutral'], 2)
     """
     from rdkit import Chem
 

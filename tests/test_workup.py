@@ -173,6 +173,16 @@ def test_five_classes_come_apart():
     found = plan(BENZOIC, PHENOL, ANILINE, BENZYLAMINE, NAPHTHALENE)
     assert found.separated == 5 and found.worst >= SEPARATED
     assert len({(one.wash, one.back_ph) for one in found.places}) == 5
+    assert all(
+        one.least_recovery == pytest.approx(one.recovery) for one in found.places
+    )  # constants are exact
+
+
+def test_intervals_lower_the_recovery_that_is_sure():
+    """Two bases a unit apart: the wash between them lies within the intervals of both."""
+    found = basirank.workup(["CCCc1ccncc1", "Nc1ccccc1Cl"]).plan
+    assert all(one.least_recovery <= one.recovery + 1e-9 for one in found.places)
+    assert any(one.least_recovery < one.recovery - 0.05 for one in found.places)
 
 
 def test_what_ph_cannot_separate_is_said_with_the_reason():
@@ -343,6 +353,13 @@ def test_the_text_of_workup_has_each_compound_its_ph_and_the_caution(run, folder
     assert "broken: refused: cannot be read as SMILES" in text
     alone = run("workup", "mix.csv", "--alone").stdout
     assert "Separation" not in alone and "aniline" in alone
+
+
+def test_workup_and_salts_write_a_table_to_standard_output(run, folder):
+    Path("one.sdf").write_text(Chem.MolToMolBlock(Chem.MolFromSmiles("NCc1ccccc1")) + "$$$$\n")
+    for command in ("workup", "salts"):
+        (row, *_) = table(run(command, "one.sdf", "-o", "-").stdout)
+        assert row["status"] == "ok", command
 
 
 def test_a_long_list_is_no_mixture(run):
