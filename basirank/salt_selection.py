@@ -9,10 +9,11 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache
 from typing import TYPE_CHECKING, Any
 
+from .conditions import pkw
 from .partition import Steps, steps_of
 from .prediction import Prediction, predict
 from .request import STANDARD, Conditions, within
@@ -358,7 +359,10 @@ def selections_of(
         sides = tuple(one for charge in charges if (one := side_of(steps, charge)) is not None)
         dissolution = None
         if sides:
-            dissolution = _dissolution(found, steps, sides[0].charge, solubility, salt_solubility, ksp)
+            dissolution = replace(
+                _dissolution(found, steps, sides[0].charge, solubility, salt_solubility, ksp),
+                water=float(pkw(conditions.temperature, conditions.ionic_strength)),
+            )
         out.append(
             SaltSelection(
                 name, text, found.message, steps, sides, dissolution, solubility is not None, ph, conditions

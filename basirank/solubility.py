@@ -18,7 +18,6 @@ from .partition import Steps
 
 Floats = NDArray[np.float64]
 
-STANDARD_PKW = 14.0  # of water at 25 C [-]
 SOLUBILITY_RANGE = (1e-12, 1e2)  # mol/L
 _AMOUNT = re.compile(r"\s*([0-9.eE+-]+)\s*([^\s\d]\S*)?\s*")
 _MOLAR = {
@@ -134,6 +133,8 @@ class Dissolution:
         Of the compound in its salt.
     molar_mass : float
         Of the free form [g/mol].
+    water : float
+        pKw at the conditions [-].
 
     Examples
     --------
@@ -149,6 +150,7 @@ class Dissolution:
     salt: float | None
     charge: int
     molar_mass: float
+    water: float = 14.0
 
     def at(self, ph: ArrayLike) -> Floats:
         r"""Solubility at each pH [mol/L]: the smaller of those of the free form and of the salt.
@@ -172,7 +174,7 @@ class Dissolution:
         if self.salt is None:
             return np.asarray(free)
         charge = self.charge * self.steps.ladder.charge(at) / ion
-        excess = self.charge * (10.0**-at - 10.0 ** (at - STANDARD_PKW))
+        excess = self.charge * (10.0**-at - 10.0 ** (at - self.water))
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             root = np.sqrt(excess**2 + 4.0 * charge * self.salt**2)
             # of the two forms of the root the one in which nothing cancels

@@ -140,8 +140,8 @@ def plan(*parts: Partition, amounts=None, **setting):
 
 
 def test_benzoic_acid_aniline_and_naphthalene_come_apart_in_two_washes():
-    """The exercise of every laboratory course in organic chemistry: acid takes aniline, base takes benzoic acid,
-    naphthalene stays (Pavia, Lampman, Kriz and Engel, Introduction to Organic Laboratory Techniques, memory)."""
+    """The standard separation of organic laboratory work: acid takes aniline, base takes benzoic acid, naphthalene
+    stays (Pavia, Lampman, Kriz and Engel, Introduction to Organic Laboratory Techniques, memory)."""
     found = plan(BENZOIC, ANILINE, NAPHTHALENE)
     acid, base, neutral = found.places
     assert len(found.washes) == 2 and found.worst > 0.9
