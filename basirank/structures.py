@@ -5,7 +5,6 @@ until nothing is charged that needn't be, tautomers in the form that rules. Each
 input.
 """
 
-import json
 import re
 from dataclasses import dataclass
 from functools import cache
@@ -30,6 +29,8 @@ _CARBON = re.compile(r"c|C(?!l)")
 _DUMMY = rdqueries.AtomNumEqualsQueryAtom(0)
 _RADICAL = rdqueries.NumRadicalElectronsGreaterQueryAtom(0)
 _ATOM_MAP = re.compile(r":\d+\]")
+# Stereo as written, and hydrogen by its number, which RDKit's own reading takes off.
+_STEREO_MARK = re.compile(r"[@/\\]|\[#")
 
 
 class Refusal(ValueError):
@@ -115,9 +116,7 @@ def _from_text(text: str) -> Parent:
     if "[H" in smiles or _ATOM_MAP.search(smiles):
         mol, index = _parse_hydrogens(smiles)
     else:
-        mol = Chem.MolFromSmiles(smiles)
-        if mol is None:
-            raise Refusal(_parse_failure(smiles))
+        mol = _parse(smiles)
     if _UNUSUAL_ATOM.search(smiles):
         return _finished(mol, index, smiles, charged="+" in smiles or "-" in smiles, plain=False)
     if not _CARBON.search(smiles) and not is_organic(mol):
@@ -170,8 +169,35 @@ def _finished(
     mol, numbers = rewrite(mol, numbers, features)
     notes += _cautions(mol, features)
     smiles = Chem.MolToSmiles(mol)
-    order = tuple(json.loads(mol.GetProp("_smilesAtomOutputOrder")))
+    order = tuple(map(int, mol.GetProp("_smilesAtomOutputOrder")[1:-1].split(",")))
     return Parent(mol, tuple(numbers), smiles, order, notes)
+
+
+def _parse(smiles: str) -> Chem.Mol:
+    """Sanitised molecule of a text without written hydrogen.
+
+    Where no stereo is written none is to be perceived: that is a quarter of the cost of reading, and a part of that of
+    writing the canonical SMILES.
+    """
+    if _STEREO_MARK.search(smiles):
+        mol = Chem.MolFromSmiles(smiles)
+    else:
+        mol = Chem.MolFromSmiles(smiles, _as_written())
+        if mol is not None and Chem.SanitizeMol(mol, catchErrors=True) == Chem.SanitizeFlags.SANITIZE_NONE:
+            mol.SetIntProp("_StereochemDone", 1)
+        else:
+            mol = None
+    if mol is None:
+        raise Refusal(_parse_failure(smiles))
+    return mol
+
+
+@cache
+def _as_written() -> Chem.SmilesParserParams:
+    parameters = Chem.SmilesParserParams()
+    parameters.sanitize = False  # type: ignore[assignment]
+    parameters.removeHs = False  # type: ignore[assignment]
+    return parameters
 
 
 def _parse_hydrogens(smiles: str) -> tuple[Chem.Mol, list[int]]:
