@@ -16,11 +16,12 @@ from typing import TYPE_CHECKING
 
 from rdkit import Chem
 
+from .graph import ATOM_TOKEN
+
 if TYPE_CHECKING:  # names of value objects only
     from .sites import Site
     from .structures import Parent
 
-_ATOM = re.compile(r"\[[^\]]*\]|Br|Cl|[BCNOPSFIbcnops*]")
 _BRACKET = re.compile(
     r"\[(?P<isotope>\d*)(?P<symbol>[A-Z][a-z]?|[a-z]{1,2}|\*)(?P<chirality>@(?:@|[A-Z]{2}\d+)?)?"
     r"(?:H\d*)?(?:[+-]+\d*)?(?P<label>:\d+)?\]"
@@ -88,7 +89,7 @@ def _edit_string(parent: Parent, changes: Sequence[Change]) -> str:
     due = {parent.output_order.index(atom): atom for atom in net}
     text = parent.smiles
     pieces, copied = [], 0
-    for position, match in enumerate(_ATOM.finditer(text)):
+    for position, match in enumerate(ATOM_TOKEN.finditer(text)):
         if position not in due:
             continue
         atom = due.pop(position)

@@ -8,15 +8,31 @@ neighbours as one small tuple, by which other modules remember what they know of
 
 from __future__ import annotations
 
+import re
+from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
+import numpy as np
+from numpy.typing import NDArray
 from rdkit import Chem
 
-AROMATIC = 4
-"""Bond order code of an aromatic bond (single 1, double 2, triple 3, dative 1)."""
+from .structures import output_order
 
-_ORDER = {1.0: 1, 2.0: 2, 3.0: 3, 1.5: AROMATIC}
-"""Order code by RDKit's bond type as a number, which is cheaper to ask for than the type."""
+ATOM_TOKEN = re.compile(r"\[[^\]]*\]|Br|Cl|[BCNOPSFIbcnops*]")
+"""An atom in a SMILES."""
+
+_HYDROGEN = re.compile(r"\[\d*H[+-]*\d*\]")
+
+AROMATIC = 4
+"""Bond order code of an aromatic bond (single 1, double 2, triple 3, all others 1)."""
+
+_ORDER = np.ones(16, dtype=np.intp)
+"""Order code by twice the bond order as RDKit counts it."""
+_ORDER[[3, 4, 6]] = AROMATIC, 2, 3
+
+_ORDER_COUNT = np.array([0.0, 1.0, 2.0**10, 2.0**20, 2.0**30])
+"""By order code, what a bond adds to the one number that counts the bonds of an atom."""
 
 Arm = tuple[int, int]
 """A neighbour and the order code of the bond to it."""
@@ -42,7 +58,7 @@ class Graph:
     aromatic : list of bool
         Aromatic in RDKit's model.
     neighbours : list of list of Arm
-        (atom, bond order code) pairs, hydrogen atoms left out.
+        (atom, bond order code) pairs in the order of the canonical SMILES, hydrogen atoms left out.
     kind : list of str
         Token of the kind of atom.
     rings : tuple of tuple of int
@@ -100,29 +116,36 @@ class AtomType:
 _TYPES: list[AtomType] = []
 _TYPE_NUMBERS: dict[AtomType, int] = {}
 
-_Seen = tuple[int, bool, int, int, int, int]
-"""Element, aromatic, charge, pi bonds, hydrogens and neighbours of an atom."""
-_KNOWN: dict[_Seen, tuple[int, str]] = {}
-"""Type number and kind by what is seen of an atom."""
+_KNOWN: dict[tuple[str, float], tuple[int, AtomType]] = {}
+"""Type and its number by token (with an H for each isotopic hydrogen beside it) and bonds; emptied when it grows past
+a bound, as isotopes may be written without end."""
+_MOST_KNOWN = 50_000
 
 _STARS: dict[Star, Star] = {}
 """One object for equal stars: a chunk of molecules then holds, and frees, far fewer of them."""
 _MOST_STARS = 50_000
 
-_ARMS: list[list[Arm]] = [[] for _ in range(AROMATIC + 1)]
-"""One object for equal arms, by order code and atom; grown to the largest molecule met."""
+_ARMS: list[Arm] = []
+"""One object for equal arms, at eight times the atom plus the order code; grown to the largest molecule met."""
 
 
-def _look_up(seen: _Seen) -> tuple[int, str]:
-    """Type number and kind of an atom that is seen for the first time."""
-    element, aromatic, charge, unsaturation, hydrogens, degree = seen
-    kind = _token(element, aromatic, unsaturation, charge)
-    own = AtomType(element, aromatic, charge, kind, hydrogens, degree)
+def _look_up(key: tuple[str, float], atom: Chem.Atom) -> tuple[int, AtomType]:
+    """Type of an atom that is seen for the first time, and its number."""
+    element, aromatic, charge = atom.GetAtomicNum(), atom.GetIsAromatic(), atom.GetFormalCharge()
+    bonds = [bond for bond in atom.GetBonds() if bond.GetOtherAtom(atom).GetAtomicNum() != 1]
+    hydrogens = atom.GetTotalDegree() - len(bonds)
+    if element == 1:
+        bonds = []
+    pi_bonds = sum({2.0: 1, 3.0: 2}.get(bond.GetBondTypeAsDouble(), 0) for bond in bonds)
+    kind = _token(element, aromatic, pi_bonds, charge)
+    own = AtomType(element, aromatic, charge, kind, hydrogens, len(bonds))
     number = _TYPE_NUMBERS.setdefault(own, len(_TYPES))
     if number == len(_TYPES):
         _TYPES.append(own)
-    _KNOWN[seen] = number, kind
-    return number, kind
+    if len(_KNOWN) >= _MOST_KNOWN:
+        _KNOWN.clear()
+    _KNOWN[key] = number, own
+    return number, own
 
 
 def type_of(number: int) -> AtomType:
@@ -135,74 +158,87 @@ def star_parts(star: Star) -> tuple[AtomType, list[tuple[int, AtomType]]]:
     return _TYPES[star[0]], [(arm & 7, _TYPES[arm >> 3]) for arm in star[1:]]
 
 
-def build_graph(mol: Chem.Mol) -> Graph:
+def build_graph(mol: Chem.Mol, smiles: str | None = None, order: Sequence[int] | None = None) -> Graph:
     """Take the plain arrays of a sanitised molecule.
+
+    Bonds are taken in one call, as a matrix; neighbours stand in canonical order, so that no walk depends on how
+    the structure was written. What an atom is follows from its token in the canonical SMILES and
+    from its bonds, so that RDKit is asked about an atom only when such a one is met for the first time.
 
     Parameters
     ----------
     mol : Chem.Mol
         Sanitised molecule, ordinary hydrogen implicit.
+    smiles : str, optional
+        Its canonical SMILES where that is at hand, with
+    order : sequence of int, optional
+        the atoms in the order in which they stand there.
 
     Returns
     -------
     Graph
         Arrays indexed like the atoms of `mol`.
     """
+    if not mol.GetNumAtoms():
+        return Graph([], [], [], [], [], [], (), [], [], [])
+    if smiles is None or order is None:
+        smiles = Chem.MolToSmiles(mol)
+        order = output_order(mol)
     number = mol.GetNumAtoms()
-    # by index: RDKit's own iterators cost twice as much
-    atoms = list(map(mol.GetAtomWithIdx, range(number)))
-    element = list(map(Chem.Atom.GetAtomicNum, atoms))
-    charge = list(map(Chem.Atom.GetFormalCharge, atoms))
-    aromatic = list(map(Chem.Atom.GetIsAromatic, atoms))
-    total_degree = list(map(Chem.Atom.GetTotalDegree, atoms))
-    neighbours, unsaturation, isotopic = _bonds(mol, element)
-    degree = list(map(len, neighbours))
-    hydrogens = [total - bonds for total, bonds in zip(total_degree, degree, strict=True)]
-    for atom in isotopic:
-        hydrogens[atom] -= sum(other.GetAtomicNum() != 1 for other in atoms[atom].GetNeighbors())
-    types, kind = [], []
-    for seen in zip(element, aromatic, charge, unsaturation, hydrogens, degree, strict=True):
-        own, name = _KNOWN.get(seen) or _look_up(seen)
-        types.append(own)
-        kind.append(name)
+    token = [""] * number
+    for atom, text in zip(order, ATOM_TOKEN.findall(smiles), strict=True):
+        token[atom] = text
+    matrix = _bond_matrix(mol)
+    if _HYDROGEN.search(smiles):  # isotopic hydrogen is no neighbour, but counted on its carrier
+        for atom in [atom for atom, text in enumerate(token) if _HYDROGEN.match(text)]:
+            for carrier in matrix[atom].nonzero()[0].tolist():
+                token[carrier] += "H"
+            matrix[atom] = matrix[:, atom] = 0.0
+    neighbours, orders = _bonds(matrix, order)
+    known = _KNOWN.get
+    types: list[int] = []
+    own: list[AtomType] = []
+    for key in zip(token, orders, strict=True):
+        type_number, one = known(key) or _look_up(key, mol.GetAtomWithIdx(len(own)))
+        types.append(type_number)
+        own.append(one)
     return Graph(
-        element,
-        charge,
-        hydrogens,
-        aromatic,
+        [atom.element for atom in own],
+        [atom.charge for atom in own],
+        [atom.hydrogens for atom in own],
+        [atom.aromatic for atom in own],
         neighbours,
-        kind,
+        [atom.kind for atom in own],
         *_rings(mol, number),
         _stars(types, neighbours),
     )
 
 
-def _bonds(mol: Chem.Mol, element: list[int]) -> tuple[list[list[Arm]], list[int], list[int]]:
-    """Neighbours and pi bonds of each atom, and the isotopic hydrogen atoms, whose bonds are left out."""
-    number = len(element)
-    while len(_ARMS[AROMATIC]) < number:
-        for order, arms in enumerate(_ARMS):
-            arms.append((len(arms), order))
-    neighbours: list[list[Arm]] = [[] for _ in element]
-    unsaturation = [0] * number
-    isotopic = [atom for atom, one in enumerate(element) if one == 1] if 1 in element else []
-    bonds = list(map(mol.GetBondWithIdx, range(mol.GetNumBonds())))
-    for first, second, kind in zip(
-        map(Chem.Bond.GetBeginAtomIdx, bonds),
-        map(Chem.Bond.GetEndAtomIdx, bonds),
-        map(Chem.Bond.GetBondTypeAsDouble, bonds),
-        strict=True,
-    ):
-        if isotopic and (element[first] == 1 or element[second] == 1):
-            continue
-        order = _ORDER.get(kind, 1)
-        arms = _ARMS[order]
-        neighbours[first].append(arms[second])
-        neighbours[second].append(arms[first])
-        if order == 2 or order == 3:
-            unsaturation[first] += order - 1
-            unsaturation[second] += order - 1
-    return neighbours, unsaturation, isotopic
+def _bond_matrix(mol: Chem.Mol) -> NDArray[np.float64]:
+    """Bond orders as RDKit counts them (1.5 for an aromatic bond) between all atoms."""
+    matrix: NDArray[np.float64] = Chem.GetAdjacencyMatrix(mol, useBO=True)
+    mol.ClearProp("AdjacencyMatrixBO")  # where RDKit keeps it: a megabyte and more for a large molecule
+    # dative bonds count at one end, zero-order bonds at none
+    if np.count_nonzero(matrix) != 2 * mol.GetNumBonds():
+        matrix = np.maximum(np.maximum(matrix, matrix.T), Chem.GetAdjacencyMatrix(mol))
+    return matrix
+
+
+def _bonds(matrix: NDArray[np.float64], order: Sequence[int]) -> tuple[list[list[Arm]], list[float]]:
+    """Neighbours of each atom in canonical order, and how many bonds of each order it has, in one number."""
+    number = len(matrix)
+    while len(_ARMS) < number << 3:
+        atom = len(_ARMS) >> 3
+        _ARMS.extend([(atom, order) for order in range(8)])
+    canonical = np.array(order)
+    flat = matrix.take(canonical, axis=1).ravel()
+    bonds = flat.nonzero()[0]
+    atoms, places = np.divmod(bonds, number)
+    code = _ORDER[(2.0 * flat[bonds]).astype(np.intp)]
+    arms = list(map(_ARMS.__getitem__, (canonical[places] << 3 | code).tolist()))
+    ends = np.searchsorted(atoms, np.arange(1, number + 1)).tolist()
+    neighbours = [arms[start:end] for start, end in pairwise([0, *ends])]
+    return neighbours, np.bincount(atoms, weights=_ORDER_COUNT[code], minlength=number).tolist()
 
 
 def _rings(

@@ -119,7 +119,7 @@ def lines_of(parents: Sequence[Parent]) -> list[Lines]:
     Stage by stage, not parent by parent: the processor then has the code of one stage at hand at a time, which makes
     a list cheaper by a twentieth.
     """
-    graphs = [build_graph(parent.mol) for parent in parents]
+    graphs = [build_graph(parent.mol, parent.smiles, parent.output_order) for parent in parents]
     found = [
         find_sites(parent.mol, graph, parent.output_order)
         for parent, graph in zip(parents, graphs, strict=True)

@@ -169,8 +169,12 @@ def _finished(
     mol, numbers = rewrite(mol, numbers, features)
     notes += _cautions(mol, features)
     smiles = Chem.MolToSmiles(mol)
-    order = tuple(map(int, mol.GetProp("_smilesAtomOutputOrder")[1:-1].split(",")))
-    return Parent(mol, tuple(numbers), smiles, order, notes)
+    return Parent(mol, tuple(numbers), smiles, output_order(mol), notes)
+
+
+def output_order(mol: Chem.Mol) -> tuple[int, ...]:
+    """Atoms in the order in which they stand in the SMILES that was written last."""
+    return tuple(map(int, mol.GetProp("_smilesAtomOutputOrder")[1:-1].split(",")))
 
 
 def _parse(smiles: str) -> Chem.Mol:
@@ -183,10 +187,13 @@ def _parse(smiles: str) -> Chem.Mol:
         mol = Chem.MolFromSmiles(smiles)
     else:
         mol = Chem.MolFromSmiles(smiles, _as_written())
-        if mol is not None and Chem.SanitizeMol(mol, catchErrors=True) == Chem.SanitizeFlags.SANITIZE_NONE:
-            mol.SetIntProp("_StereochemDone", 1)
-        else:
-            mol = None
+        if mol is not None:
+            try:
+                Chem.SanitizeMol(mol)
+            except Chem.MolSanitizeException:
+                mol = None
+            else:
+                mol.SetIntProp("_StereochemDone", 1)
     if mol is None:
         raise Refusal(_parse_failure(smiles))
     return mol

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import random
 from collections import Counter
 
 import pytest
 from rdkit import Chem
 
-from basirank.graph import AROMATIC, Graph, build_graph
+from basirank.graph import AROMATIC, Graph, build_graph, type_of
+from basirank.structures import output_order
 
 
 def graph(smiles: str) -> Graph:
@@ -115,6 +117,45 @@ def test_renumbered_atoms_carry_their_properties_along(smiles):
         assert sorted(turned.neighbours[place[atom]]) == sorted(
             (place[o], k) for o, k in plain.neighbours[atom]
         )
+
+
+@pytest.mark.parametrize("seed", range(5))
+def test_neighbours_stand_in_the_order_of_the_canonical_smiles_however_atoms_are_numbered(seed):
+    mol = Chem.MolFromSmiles("CC(C)NCC(O)COc1cccc2ccccc12")
+    order = list(range(mol.GetNumAtoms()))
+    random.Random(seed).shuffle(order)
+    mixed = Chem.RenumberAtoms(mol, order)
+    Chem.MolToSmiles(mixed)
+    position = {atom: place for place, atom in enumerate(output_order(mixed))}
+    for around in build_graph(mixed).neighbours:
+        places = [position[other] for other, _ in around]
+        assert places == sorted(places)
+
+
+def test_dative_and_zero_order_bonds_make_neighbours_at_both_ends():
+    adduct = graph("CN(C)(C)->[Cu]")
+    assert (4, 1) in adduct.neighbours[1]
+    assert (1, 1) in adduct.neighbours[4]
+    loose = Chem.RWMol(Chem.MolFromSmiles("CN.CN"))
+    loose.AddBond(1, 3, Chem.BondType.ZERO)
+    Chem.SanitizeMol(loose)
+    found = build_graph(loose)
+    assert (3, 1) in found.neighbours[1]
+    assert (1, 1) in found.neighbours[3]
+
+
+def test_an_atom_beside_deuterium_is_not_taken_for_one_with_as_many_carbons():
+    """Both carbons are written C with two single bonds."""
+    chain, marked = graph("CCC"), graph("[2H]CC")
+    assert chain.hydrogens == [3, 2, 3]
+    assert marked.hydrogens[1:] == [3, 3]
+    assert [type_of(star[0]).degree for star in marked.star[1:]] == [1, 1]
+
+
+def test_a_large_molecule_keeps_no_matrix_of_its_bonds():
+    mol = Chem.MolFromSmiles("N" + "CCO" * 30)
+    build_graph(mol)
+    assert not any("Adjacency" in name for name in mol.GetPropNames(True, True))
 
 
 def test_a_molecule_is_not_changed():

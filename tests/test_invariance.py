@@ -51,6 +51,9 @@ TWO_PATHS = {
     "adenosine": "Nc1ncnc2c1ncn2[C@@H]1O[C@H](CO)[C@@H](O)[C@H]1O",
     "guanine": "Nc1nc2[nH]cnc2c(=O)[nH]1",
     "2-thiopyrimidine": "S=c1nccc[nH]1",
+    "cefotetan with its ring sulfur drawn tetravalent": (
+        "COC1(NC(=O)C2SC3=S2OC(N)=C3C(=O)O)C(=O)N2C(C(=O)O)=C(CSc3nnnn3C)CSC12"
+    ),
 }
 """Compounds in which some atom is reached from a site by two shortest paths that differ in their atoms: what
 the residual counts of their surroundings still depends on the spelling."""
