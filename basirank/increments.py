@@ -110,6 +110,8 @@ class Coefficient:
 
 Descriptor = tuple[Label, tuple[int, ...], float]
 Describe = Callable[["SiteWalks", int], Iterable[Descriptor]]
+Sort = tuple[str, str]
+"""What a ring atom is or carries, and at which position."""
 
 
 class SiteWalks:
@@ -122,7 +124,7 @@ class SiteWalks:
         self.graph: Graph = substituents.graph
         self.core = frozenset(site.core)
         self._chain: dict[int, list[ChainHit]] = {}
-        self._ring: dict[int, dict[tuple[str, str], list[RingHit]]] = {}
+        self._ring: dict[int, dict[Sort, list[RingHit]]] = {}
         self._direct: dict[int, list[tuple[int, int]]] = {}
 
     def chain(self, anchor: int) -> list[ChainHit]:
@@ -134,6 +136,10 @@ class SiteWalks:
 
     def ring(self, anchor: int, feature: str, position: str) -> Sequence[RingHit]:
         """What of one sort the aromatic system carries at a position ("": all but ortho), by distance."""
+        return self.around(anchor).get((feature, position), ())
+
+    def around(self, anchor: int) -> dict[Sort, list[RingHit]]:
+        """What the aromatic system of the anchor carries, by feature and position; empty for one in no such system."""
         hits = self._ring.get(anchor)
         if hits is None:
             hits = self._ring[anchor] = {}
@@ -142,7 +148,7 @@ class SiteWalks:
                     hits.setdefault((hit.feature, hit.position), []).append(hit)
                     if hit.position != "ortho":
                         hits.setdefault((hit.feature, ""), []).append(hit)
-        return hits.get((feature, position), ())
+        return hits
 
     def direct(self, anchor: int) -> list[tuple[int, int]]:
         """Atoms bound to the anchor outside the unit, aromatic bonds apart."""
@@ -263,25 +269,34 @@ def _feature(feature: str, position: str, distance: int = 0) -> Describe:
     return descriptor
 
 
-def _feature_terms() -> dict[str, Describe]:
-    features = {
-        "aza": "aza",
-        "pyrrolic": "pyrrole-type nitrogen",
-        "chalcogen": "chalcogen",
-        "oxo": "oxo",
-        "thioxo": "thioxo",
-        "fusion": "fusion",
-        "azinium": "azinium",
-    }
-    terms = {
-        f"{short}_{position}": _feature(name, position)
-        for short, name in features.items()
-        for position in ("ortho", "meta", "para", "far")
-    }
-    for short in ("aza", "pyrrolic"):
-        terms |= {f"{short}_far{away}": _feature(features[short], "far", away) for away in range(2, 7)}
-    return terms
+_FEATURES = {
+    "aza": "aza",
+    "pyrrolic": "pyrrole-type nitrogen",
+    "chalcogen": "chalcogen",
+    "oxo": "oxo",
+    "thioxo": "thioxo",
+    "fusion": "fusion",
+    "azinium": "azinium",
+}
 
+
+def _feature_terms() -> Iterator[tuple[str, Sort, int]]:
+    """Terms of what the ring atoms are: name, sort, and distance where only one counts."""
+    for short, name in _FEATURES.items():
+        for position in ("ortho", "meta", "para", "far"):
+            yield f"{short}_{position}", (name, position), 0
+    for short in ("aza", "pyrrolic"):
+        for away in range(2, 7):
+            yield f"{short}_far{away}", (_FEATURES[short], "far"), away
+
+
+SORTS: dict[str, Sort] = {
+    "hammett": ("group", ""),
+    "hammett_minus": ("group", ""),
+    **dict.fromkeys(("ortho_i", "ortho_r", "ortho", "ortho_n"), ("group", "ortho")),
+    **{term: sort for term, sort, _ in _feature_terms()},
+}
+"""By term, the one sort of thing on an aromatic system that it asks for: where that is missing it comes to nothing."""
 
 TERMS: dict[str, Describe] = {
     "sigma_star": _sigma_star,
@@ -301,7 +316,7 @@ TERMS: dict[str, Describe] = {
     "ortho_r": _ortho("sigma_r", "sigma_R"),
     "ortho": _ortho("sigma_ortho", "ortho constant"),
     "ortho_n": _ortho("", "place"),
-    **_feature_terms(),
+    **{term: _feature(*sort, away) for term, sort, away in _feature_terms()},
     "resonance": _resonance,
 }
 """Every term that a row of `coefficients.csv` may name, with the descriptor it stands for."""
@@ -328,24 +343,28 @@ def coefficients() -> dict[str, tuple[Coefficient, ...]]:
     return {owner: tuple(rows) for owner, rows in by_owner.items()}
 
 
+Step = tuple[Describe, Sort | None, Coefficient]
+"""A term of a line: its descriptor, the sort of thing it asks for, its coefficient."""
+
+
 @dataclass(frozen=True, slots=True)
 class Line:
     """The linear free-energy relationship of one class: parent value and coefficients, ready to use."""
 
     parent: float
     parent_source: str
-    steps: tuple[tuple[frozenset[int], Describe, Coefficient], ...]
-    plans: dict[tuple[int, ...], list[tuple[Describe, Coefficient, tuple[int, ...]]]]
+    steps: tuple[tuple[frozenset[int], Step], ...]
+    plans: dict[tuple[int, ...], list[tuple[Step, tuple[int, ...]]]]
 
-    def plan(self, roles: tuple[int, ...]) -> list[tuple[Describe, Coefficient, tuple[int, ...]]]:
+    def plan(self, roles: tuple[int, ...]) -> list[tuple[Step, tuple[int, ...]]]:
         """Steps that concern a site with anchors of these roles, and at which of them; remembered."""
         plan = self.plans.get(roles)
         if plan is None:
             plan = self.plans[roles] = []
-            for wanted, describe, coefficient in self.steps:
+            for wanted, step in self.steps:
                 places = tuple(place for place, role in enumerate(roles) if role in wanted)
                 if places:
-                    plan.append((describe, coefficient, places))
+                    plan.append((step, places))
         return plan
 
 
@@ -360,7 +379,10 @@ def _line(name: str, family: str, prior: float, source: str) -> Line:
     own = table.get(name, ())
     taken = {(c.anchors, c.term) for c in own}
     rows = own + tuple(c for c in table.get(family, ()) if (c.anchors, c.term) not in taken)
-    steps = tuple((frozenset(map(int, row.anchors.split())), TERMS[row.term], row) for row in rows)
+    steps = tuple(
+        (frozenset(map(int, row.anchors.split())), (TERMS[row.term], SORTS.get(row.term), row))
+        for row in rows
+    )
     return Line(parent, source, steps, {})
 
 
@@ -389,8 +411,10 @@ def site_terms(substituents: Substituents, site: Site) -> tuple[Term, ...]:
     parent = ("parent: {}", site.site_class)
     terms = [Term(parent, site.core, 1.0, line.parent, line.parent_source, (site.site_class, "", "parent"))]
     anchors = [anchor for _, anchor in site.anchors]
-    for describe, coefficient, places in line.plan(tuple([role for role, _ in site.anchors])):
+    for (describe, sort, coefficient), places in line.plan(tuple([role for role, _ in site.anchors])):
         for place in places:
+            if sort is not None and sort not in walks.around(anchors[place]):
+                continue
             for label, atoms, descriptor in describe(walks, anchors[place]):
                 if descriptor:
                     terms.append(

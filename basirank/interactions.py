@@ -183,9 +183,9 @@ def _paths_from(graph: Graph, start: int, ends: Collection[int]) -> tuple[list[i
     unsaturated = [kind != "C3" for kind in graph.kind]
     distance, count, conjugated = [-1] * len(unsaturated), [0] * len(unsaturated), [0] * len(unsaturated)
     distance[start], count[start] = 0, 1
-    edge = [start]
+    edge, sought = [start], {*ends} - {start}
     away = 0
-    while edge and min([distance[end] for end in ends]) < 0:
+    while edge and sought:
         away += 1
         following: list[int] = []
         for inner in edge:
@@ -201,6 +201,7 @@ def _paths_from(graph: Graph, start: int, ends: Collection[int]) -> tuple[list[i
                     step = along + 1 if conjugable and unsaturated[other] else along
                     if step > conjugated[other]:
                         conjugated[other] = step
+        sought.difference_update(following)
         edge = following
     return distance, count, conjugated
 

@@ -207,11 +207,10 @@ class Group:
         """Rows of the features that pieces show, copies included, and the weight of all features."""
         read, copies = self.read, self.copies
         found = [read.get(piece) or self.look_up(piece) for piece in pieces]
-        rows = []
-        for row, count in Counter(chain.from_iterable([known for _, known in found])).items():
-            rows.append(row)
-            if count > 1 and row in copies:
-                rows += copies[row][: count - 1]
+        counts = Counter(chain.from_iterable([known for _, known in found]))
+        rows = list(counts)
+        for row, count in [item for item in counts.items() if item[1] > 1]:
+            rows += copies.get(row, ())[: count - 1]
         return rows, sum([weight for weight, _ in found])
 
 

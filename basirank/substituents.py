@@ -82,26 +82,32 @@ def chain_walk(substituents: Substituents, anchor: int, core: frozenset[int]) ->
 class _ChainWalk:
     """One walk along saturated carbon; `hits` is what it has met."""
 
-    __slots__ = ("core", "fade", "graph", "hits", "reach", "substituents")
+    __slots__ = ("core", "fade", "graph", "hits", "kind", "neighbours", "reach", "substituents")
 
     def __init__(self, substituents: Substituents, core: frozenset[int]) -> None:
         self.substituents = substituents
         self.graph = substituents.graph
+        self.kind, self.neighbours = self.graph.kind, self.graph.neighbours
         self.core = core
         self.fade, self.reach, _ = _walking()
         self.hits: list[ChainHit] = []
 
     def follow(self, atom: int, origin: int, order: int, path: tuple[int, ...], share: float) -> None:
         """From one atom on, the last of the path."""
-        graph = self.graph
-        if graph.kind[atom] == "C3" and not _is_halocarbon(graph, atom, origin):
+        graph, kind = self.graph, self.kind
+        if kind[atom] == "C3" and not _is_halocarbon(graph, atom, origin):
             share *= self.fade
             if share < self.reach:
                 return
-            core = self.core
-            for other, other_order in graph.neighbours[atom]:
-                if other != origin and other not in path and other not in core:
-                    self.follow(other, atom, other_order, (*path, other), share)
+            at_end = share * self.fade < self.reach
+            core, neighbours = self.core, self.neighbours
+            for other, other_order in neighbours[atom]:
+                if other == origin or other in path or other in core:
+                    continue
+                # a carbon past the end, too bare to be a halocarbon
+                if at_end and kind[other] == "C3" and len(neighbours[other]) < 3:
+                    continue
+                self.follow(other, atom, other_order, (*path, other), share)
             return
         self.hits.append(ChainHit(self.substituents.group(atom, origin, order), (atom,), len(path), share))
         if graph.aromatic[atom]:
@@ -152,6 +158,8 @@ def _halogens(star: Star) -> int:
 
 def _is_halocarbon(graph: Graph, atom: int, origin: int) -> bool:
     """A carbon whose other neighbours are two or more halogens (CHF2, CF3, CCl3): one group, not a chain."""
+    if len(graph.neighbours[atom]) < 3:
+        return False
     return _halogens(graph.star[atom]) - (graph.element[origin] in _HALOGENS) >= 2
 
 

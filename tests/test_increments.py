@@ -12,7 +12,7 @@ from rdkit import Chem
 
 from basirank import increments
 from basirank.graph import build_graph
-from basirank.increments import TERMS, Estimate, Term, coefficients, line_of, site_terms
+from basirank.increments import SORTS, TERMS, Estimate, SiteWalks, Term, coefficients, line_of, site_terms
 from basirank.prediction import CORRECTION, Prediction, predict, site_lines
 from basirank.sites import find_sites, site_classes
 from basirank.structures import Refusal, read_parent
@@ -350,8 +350,22 @@ def test_a_coefficient_of_the_class_stands_before_that_of_its_family():
     for row in site_classes():
         if row.kind == "none":
             continue
-        steps = [(c.anchors, c.term) for *_, c in line_of(row).steps]
+        steps = [(c.anchors, c.term) for _, (*_, c) in line_of(row).steps]
         assert len(steps) == len(set(steps)), row.name
+
+
+def test_a_term_that_is_passed_over_for_want_of_its_sort_comes_to_nothing(predictions):
+    asked = 0
+    for prediction in predictions:
+        substituents = Substituents(prediction.lines.graph)
+        for site in prediction.lines.sites:
+            walks = SiteWalks(substituents, site)
+            for anchor in {atom for _, atom in site.anchors}:
+                for term, sort in SORTS.items():
+                    if sort not in walks.around(anchor):
+                        asked += 1
+                        assert not list(TERMS[term](walks, anchor)), (term, prediction.parent.smiles)
+    assert asked > 1000
 
 
 def test_an_unknown_term_in_the_table_is_an_error_that_names_the_row(monkeypatch):

@@ -1,15 +1,20 @@
 """From text to parent: one compound gives one parent, however it is spelled, drawn, salted or protonated."""
 
+import csv
 import random
+import re
+from pathlib import Path
 
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from rdkit import Chem
 
-from basirank import tables
+from basirank import structures, tables
 from basirank.structures import Refusal, read_parent
 from basirank.tables import read_table
+
+DATA = Path(__file__).resolve().parent.parent / "data"
 
 
 def parent(text: str) -> str:
@@ -371,6 +376,23 @@ def test_output_order_names_the_atoms_of_the_text():
     assert [found.mol.GetAtomWithIdx(i).GetSymbol() for i in found.output_order] == [
         atom.GetSymbol() for atom in again.GetAtoms()
     ]
+
+
+def test_where_no_stereo_is_written_the_parent_is_that_of_the_whole_reading(monkeypatch):
+    """Stereo isn't looked for where none is written: nothing is lost, and none is made up."""
+    with (DATA / "class_examples.csv").open(encoding="utf-8", newline="") as handle:
+        examples = [row["smiles"] for row in csv.DictReader(handle)]
+    unmarked = [
+        "CC=NO", "CC(O)C(N)C=CC", "C1CCCC=CCCN1", "C[13CH](N)CC", "[2H]C(N)CC", "C[N+](CC)(CCC)CCCC", "CN(=O)=O",
+        "C[#1]", "CC(F)(Cl)N", "O=S(C)CCN", "CC1CC(N)C1", "Cc1cccc(N)c1-c1c(C)cccc1O", "NC=C=CC",
+    ]  # fmt: skip
+    read = [text for text in [*examples, *unmarked] if not set("@/\\") & set(text)]
+    assert len(read) > 250
+    short = [read_parent(text) for text in read]
+    monkeypatch.setattr(structures, "_STEREO_MARK", re.compile(""))  # found in every text
+    for text, found in zip(read, short, strict=True):
+        whole = read_parent(text)
+        assert (found.smiles, found.output_order) == (whole.smiles, whole.output_order), text
 
 
 def test_only_the_first_word_is_the_structure():
