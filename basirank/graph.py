@@ -190,10 +190,10 @@ def build_graph(mol: Chem.Mol, smiles: str | None = None, order: Sequence[int] |
         token[atom] = text
     matrix = _bond_matrix(mol)
     if _HYDROGEN.search(smiles):  # isotopic hydrogen is no neighbour, but counted on its carrier
-        for atom in [atom for atom, text in enumerate(token) if _HYDROGEN.match(text)]:
-            for carrier in matrix[atom].nonzero()[0].tolist():
-                token[carrier] += "H"
-            matrix[atom] = matrix[:, atom] = 0.0
+        isotopic = [atom for atom, text in enumerate(token) if _HYDROGEN.match(text)]
+        for carrier in matrix[isotopic].nonzero()[1].tolist():
+            token[carrier] += "H"
+        matrix[isotopic] = matrix[:, isotopic] = 0.0
     neighbours, orders = _bonds(matrix, order)
     known = _KNOWN.get
     types: list[int] = []

@@ -8,6 +8,7 @@ from collections import Counter
 import pytest
 from rdkit import Chem
 
+from basirank import graph as graph_module
 from basirank.graph import AROMATIC, Graph, build_graph, type_of
 from basirank.structures import output_order
 
@@ -150,6 +151,12 @@ def test_an_atom_beside_deuterium_is_not_taken_for_one_with_as_many_carbons():
     assert chain.hydrogens == [3, 2, 3]
     assert marked.hydrogens[1:] == [3, 3]
     assert [type_of(star[0]).degree for star in marked.star[1:]] == [1, 1]
+
+
+def test_deuterium_beside_deuterium_is_not_taken_for_that_on_carbon():
+    graph_module._KNOWN.clear()
+    assert graph("[2H][2H]").hydrogens == [1, 1]
+    assert graph("[2H]C").hydrogens == [0, 4]
 
 
 def test_a_large_molecule_keeps_no_matrix_of_its_bonds():
