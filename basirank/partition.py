@@ -13,7 +13,7 @@ from itertools import product
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from .curves import ANION_BELOW, CATION_BELOW, log_d
+from .curves import log_d
 from .equilibrium import Equilibrium, SiteSet, equilibrate
 from .ladder import Ladder, ladder_of
 
@@ -22,7 +22,10 @@ Floats = NDArray[np.float64]
 WHOLE_SCALE = np.arange(
     -2.0, 16.01, 0.25
 )  # pH at one of which most molecules have no net charge, if any have
-ION_PAIRS = (CATION_BELOW, ANION_BELOW)
+ION_PAIRS = (5.0, 6.0)
+"""log P of an ion pair below that of the neutral form, for a cation and an anion, between water and a usual solvent of
+extraction such as ether, ethyl acetate or toluene: common practice takes it for nothing there; octanol keeps 3 and 4
+(`curves`), chlorinated solvents lie between [-]."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)

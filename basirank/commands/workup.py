@@ -58,8 +58,8 @@ MOST_ROWS = 10_000  # compounds of one list
     "--ion-pairs",
     type=(str, str),
     metavar="C A",
-    default=("3", "4"),
-    help="log P units of ion pairs of cations and anions below the neutral form; 20 20 for none. [default: 3 4]",
+    default=("5", "6"),
+    help="log P units of ion pairs of cations and anions below the neutral form; 3 4 for octanol. [default: 5 6]",
 )
 @click.option("--alone", is_flag=True, help="Each compound by itself; no plan for the mixture.")
 def command(
