@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 from .explanation import CAUTION
 from .request import STANDARD
-from .writers import shorten
+from .writers import aligned, printable
 
 if TYPE_CHECKING:
     from .extraction import Compound, Reach, Setting, Workup
@@ -23,29 +23,6 @@ LIMITS = (
     "and {1:g} (anion) log P units below the neutral form. Not considered: emulsions, salting out, buffers that run "
     "short, solubility of the salt, rate. Hazards are rules of thumb for a short wash at room temperature."
 )
-
-
-def aligned(rows: Sequence[Sequence[str]], right: Sequence[int] = ()) -> list[str]:
-    """Rows of text as lines with even columns; those in `right` are set to the right.
-
-    Examples
-    --------
-    >>> aligned([["a", "1"], ["bc", "10"]], right=[1])
-    ['a    1', 'bc  10']
-    """
-    widths = [max(map(len, column)) for column in zip(*rows, strict=True)]
-    return [
-        "  ".join(
-            text.rjust(width) if n in right else text.ljust(width)
-            for n, (text, width) in enumerate(zip(row, widths, strict=True))
-        ).rstrip()
-        for row in rows
-    ]
-
-
-def printable(text: str, width: int = NAME_WIDTH) -> str:
-    """A name on one line, without control characters, cut to a width."""
-    return shorten("".join(letter if letter.isprintable() else " " for letter in text), width)
 
 
 def caution() -> list[str]:
@@ -128,7 +105,7 @@ def workup_text(done: Workup) -> str:
         log_p = one.partition.log_p
         rows.append(
             [
-                printable(label(one)),
+                printable(label(one), NAME_WIDTH),
                 one.kind,
                 "" if log_p is None else f"{log_p:.2f}{'*' if one.estimated else ' '}",
                 _reach_text(one.into_water, setting),
@@ -141,7 +118,7 @@ def workup_text(done: Workup) -> str:
         lines.append("* estimated from atom contributions (Wildman and Crippen 1999)")
     for one in done.compounds:
         if one.partition is None:
-            lines.append(f"{printable(label(one))}: refused: {one.message}")
+            lines.append(f"{printable(label(one), NAME_WIDTH)}: refused: {one.message}")
     lines += _remarks(sound)
     if done.plan is not None:
         lines += ["", *_plan_text(done.plan, done.compounds)]
@@ -156,7 +133,7 @@ def _remarks(sound: Sequence[Compound]) -> list[str]:
         said = [*own_remarks(one.message), *one.cautions]
         said += map(str, one.hazards)
         if said:
-            text = f"{printable(label(one))}: {'; '.join(said)}"
+            text = f"{printable(label(one), NAME_WIDTH)}: {'; '.join(said)}"
             lines += textwrap.wrap(text, WIDTH, subsequent_indent="    ")
     return ["", *lines] if lines else []
 
@@ -193,13 +170,13 @@ def _plan_text(plan: Plan, compounds: Sequence[Compound]) -> list[str]:
     if poor:
         lines += ["", "Not separated by pH alone (recovery or purity under about nine tenths):"]
         for one in poor:
-            text = f"  {printable(label(compounds[one.compound]))}: {one.why}"
+            text = f"  {printable(label(compounds[one.compound]), NAME_WIDTH)}: {one.why}"
             lines += textwrap.wrap(text, WIDTH, subsequent_indent="    ")
     for one in plan.places:
         met = [*plan.washes[: one.wash], *(() if one.back_ph is None else (one.back_ph,))]
         for group in compounds[one.compound].hazards:
             if reacts := [f"{ph:g}" for ph in met if group.at(ph)]:
-                name = printable(label(compounds[one.compound]))
+                name = printable(label(compounds[one.compound]), NAME_WIDTH)
                 text = f"Mind: {name} meets pH {' and '.join(reacts)}; {group}"
                 lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent="    ")
     return lines
@@ -214,7 +191,13 @@ def _placed(
             sure = f"({percent(one.least_recovery)} with margin)"
             share = f"recovery {percent(one.recovery)} {sure}"
             rows.append(
-                ["", where, printable(label(compounds[one.compound])), share, f"purity {percent(one.purity)}"]
+                [
+                    "",
+                    where,
+                    printable(label(compounds[one.compound]), NAME_WIDTH),
+                    share,
+                    f"purity {percent(one.purity)}",
+                ]
             )
             where = ""
     return rows

@@ -6,10 +6,11 @@ import textwrap
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
-from .bench_text import WIDTH, aligned, caution, own_remarks, printable
+from .bench_text import WIDTH, caution, own_remarks
 from .request import STANDARD
 from .salt_selection import COCRYSTAL, HIGH_PH_MAX, LOW_PH_MAX, RULE, SALT
 from .solubility import ph_of_maximum
+from .writers import aligned, printable
 
 if TYPE_CHECKING:
     from .salt_selection import Candidate, SaltSelection, Side

@@ -187,20 +187,36 @@ def ranked_table(
     return "\n".join(lines)
 
 
+def aligned(rows: Sequence[Sequence[str]], right: Sequence[int] = ()) -> list[str]:
+    """Rows of text as lines with even columns; those in `right` are set to the right.
+
+    Examples
+    --------
+    >>> aligned([["a", "1"], ["bc", "10"]], right=[1])
+    ['a    1', 'bc  10']
+    """
+    widths = [max(map(len, column)) for column in zip(*rows, strict=True)]
+    return [
+        "  ".join(
+            text.rjust(width) if n in right else text.ljust(width)
+            for n, (text, width) in enumerate(zip(row, widths, strict=True))
+        ).rstrip()
+        for row in rows
+    ]
+
+
 def aligned_table(heading: Sequence[str], rows: Sequence[Sequence[str]], text: Sequence[int] = (0,)) -> str:
-    """Rows of text in columns, indented; columns named by number in `text` stand to the left, numbers to the right."""
+    """A table as indented lines; columns named by number in `text` stand to the left, numbers to the right."""
     clean = [
         ["".join(c if c.isprintable() else " " for c in cell) for cell in row] for row in (heading, *rows)
     ]
-    widths = [max(len(row[n]) for row in clean) for n in range(len(heading))]
-    lines = (
-        "  ".join(
-            cell.ljust(width) if n in text else cell.rjust(width)
-            for n, (cell, width) in enumerate(zip(row, widths, strict=True))
-        )
-        for row in clean
-    )
-    return "\n".join("  " + line.rstrip() for line in lines)
+    lines = aligned(clean, [n for n in range(len(heading)) if n not in text])
+    return "\n".join("  " + line for line in lines)
+
+
+def printable(text: str, width: int) -> str:
+    """A name on one line, without control characters, cut to a width."""
+    return shorten("".join(letter if letter.isprintable() else " " for letter in text), width)
 
 
 def _fit(widths: dict[str, int], width: int) -> dict[str, int]:
