@@ -20,8 +20,10 @@ if TYPE_CHECKING:
     from .local_models import read_local, save_local
     from .report import report_html
     from .salt_selection import SaltSelection, counter_ions
+    from .scanning import Scan, scan
     from .scoring import Score, score
     from .titration import Titration, titrate
+    from .tuning import Tuning, tune
 
 __version__ = "0.1.0"
 
@@ -32,8 +34,10 @@ __all__ = [
     "LocalModel",
     "Measurement",
     "SaltSelection",
+    "Scan",
     "Score",
     "Titration",
+    "Tuning",
     "Workup",
     "__version__",
     "annotate",
@@ -47,9 +51,11 @@ __all__ = [
     "read_local",
     "report_html",
     "save_local",
+    "scan",
     "score",
     "show",
     "titrate",
+    "tune",
     "workup",
 ]
 
@@ -74,6 +80,10 @@ _HOMES = {
     "Workup": "extraction",
     "counter_ions": "salt_selection",
     "SaltSelection": "salt_selection",
+    "tune": "tuning",
+    "Tuning": "tuning",
+    "scan": "scanning",
+    "Scan": "scanning",
     "report_html": "report",
     "score": "scoring",
     "Score": "scoring",

@@ -34,6 +34,7 @@ COMMANDS = {
     "titrate": "Titration curve of a compound or its salt, with equivalence points.",
     "workup": "Acid-base extraction: pH into water and back, and the washes that separate a mixture.",
     "salts": "Counter-ions ranked for a salt, pH of maximum solubility, solubility against pH.",
+    "tune": "Small changes of structure that bring a pKaH into a window.",
 }
 """Each command with its line in the help; its module in `basirank.commands` has the same name."""
 
@@ -48,6 +49,7 @@ Examples:
   basirank titrate "CCN.Cl" --concentration 0.05
   basirank workup mixture.smi
   basirank salts CCN --top 10
+  basirank tune "C1CCCCN1Cc1ccccc1" --to 6.5:7.5
   basirank report list.smi -o report.html
 """
 

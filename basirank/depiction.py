@@ -218,7 +218,7 @@ def stacked_svg(explanations: Iterable[tuple[Explanation, str]]) -> str | None:
     for content, box in panels:
         body.append(f'<g transform="translate({-box.left:.1f} {y - box.top:.1f})">{content}</g>')
         y += box.bottom - box.top
-    title = escape(_printable("; ".join(titles)))
+    title = escape(printable("; ".join(titles)))
     return (
         f'<svg class="basirank" xmlns="http://www.w3.org/2000/svg" role="img" width="{width:.0f}" height="{y:.0f}" '
         f'viewBox="0 0 {width:.1f} {y:.1f}"><title>{title}</title><style>{STYLE}</style>{"".join(body)}</svg>\n'
@@ -236,7 +236,7 @@ def picture_svg(told: Explanation, width: float) -> str | None:
     return (
         f'<svg class="basirank" xmlns="http://www.w3.org/2000/svg" role="img" width="{wide * ratio:.0f}" '
         f'height="{high * ratio:.0f}" viewBox="{box.left:.1f} {box.top:.1f} {wide:.1f} {high:.1f}">'
-        f"<title>{escape(_printable(told.structure))}</title><style>{STYLE}</style>"
+        f"<title>{escape(printable(told.structure))}</title><style>{STYLE}</style>"
         f"{_structure(picture)}{_marks(picture.marks)}</svg>"
     )
 
@@ -305,7 +305,7 @@ def _signed(value: float) -> str:
 
 
 def _captioned(lines: Sequence[str], body: str, box: Box) -> tuple[str, Box]:
-    lines = [_printable(line) for line in lines]
+    lines = [printable(line) for line in lines]
     top = box.top - CAPTION_HEIGHT * len(lines)
     captions = "".join(
         f'<text class="b-title" x="{box.left + MARGIN:.1f}" y="{top + CAPTION_HEIGHT * (n + 0.75):.1f}">'
@@ -318,13 +318,17 @@ def _captioned(lines: Sequence[str], body: str, box: Box) -> tuple[str, Box]:
     return captions + body, Box(box.left, top, right, box.bottom + MARGIN)
 
 
-def _printable(text: str) -> str:
+def printable(text: str) -> str:
     """A text without control characters, which XML does not allow."""
     return "".join(letter if letter.isprintable() else " " for letter in text)
 
 
 def _structure(picture: Picture) -> str:
-    drawing = picture.drawing
+    return strokes(picture.drawing)
+
+
+def strokes(drawing: Drawing) -> str:
+    """Bonds and letters of a structure as SVG."""
     letters = "".join(
         f'<text class="b-letter" x="{one.x}" y="{one.y}" font-size="{one.size:g}">{escape(one.text)}</text>'
         for one in drawing.letters

@@ -89,19 +89,53 @@ def draw(smiles: str) -> Drawing | None:
         return _drawn(mol)
 
 
+def draw_like(smiles: str, model: str, pairs: tuple[tuple[int, int], ...]) -> Drawing | None:
+    """A structure turned so that it lies as another is drawn, as well as turning alone can do it.
+
+    Parameters
+    ----------
+    smiles, model : str
+        The structure, and the one that `draw` shows.
+    pairs : tuple of (int, int)
+        Atoms of the two that are the same.
+    """
+    from rdkit import Chem, rdBase
+    from rdkit.Chem import rdMolAlign
+
+    with rdBase.BlockLogs():
+        mols = [Chem.MolFromSmiles(text) for text in (smiles, model)]
+        if any(mol is None or not mol.GetNumAtoms() for mol in mols):
+            return None
+        mol, other = (_laid_out(one) for one in mols)
+        if len(pairs) > 1:
+            rdMolAlign.AlignMol(mol, other, atomMap=list(pairs))
+        return _drawing_of(mol, mols[0].GetNumAtoms())
+
+
 def _drawn(mol: Chem.Mol) -> Drawing:
+    return _drawing_of(_laid_out(mol), mol.GetNumAtoms())
+
+
+def _laid_out(mol: Chem.Mol) -> Chem.Mol:
+    """A copy with coordinates, ready to be drawn."""
     from rdkit.Chem import rdDepictor
     from rdkit.Chem.Draw import rdMolDraw2D
 
     prepared = rdMolDraw2D.PrepareMolForDrawing(mol, addChiralHs=False)
     rdDepictor.StraightenDepiction(prepared)
+    return prepared
+
+
+def _drawing_of(prepared: Chem.Mol, atoms: int) -> Drawing:
+    from rdkit.Chem.Draw import rdMolDraw2D
+
     drawer = rdMolDraw2D.MolDraw2DSVG(-1, -1, -1, -1, True)
     options: Any = drawer.drawOptions()
     options.useBWAtomPalette()
     options.clearBackground = False
     options.prepareMolsBeforeDrawing = False
     drawer.DrawMolecule(prepared)
-    places = [drawer.GetDrawCoords(n) for n in range(mol.GetNumAtoms())]
+    places = [drawer.GetDrawCoords(n) for n in range(atoms)]
     drawer.FinishDrawing()
     return _geometry(drawer.GetDrawingText(), tuple((round(p.x, 1), round(p.y, 1)) for p in places))
 

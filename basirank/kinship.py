@@ -183,19 +183,33 @@ class _Kin:
 
 @dataclass(frozen=True, slots=True)
 class Standing:
-    """First constant of one compound as the order of a list sees it: value [-], half of its 90 % interval, carrier."""
+    """One constant of a compound beside that of another: value [-], half of its 90 % interval, carrier."""
 
     value: float
     half_width: float
     footprint: Footprint
 
 
+def difference_sd(first: Standing, second: Standing) -> float:
+    r"""Standard deviation of the difference of two constants [pK units].
+
+    .. math:: \sigma = \sqrt{\sigma_a^2 + \sigma_b^2 - 2 \rho \sigma_a \sigma_b}
+
+    with the correlation of the corrections of the two carriers as rho.
+    """
+    one, other = first.half_width / NINETY, second.half_width / NINETY
+    shared = posterior_covariance(first.footprint, second.footprint)
+    correlation = shared / math.sqrt(first.footprint.variance * second.footprint.variance)
+    variance = one**2 + other**2 - 2.0 * min(max(correlation, -1.0), 1.0) * one * other
+    return math.sqrt(max(variance, 0.0))
+
+
 def above(first: Standing, second: Standing) -> float:
     r"""Probability that the first compound is truly more basic than the second.
 
-    .. math:: P = \Phi\left(\frac{a - b}{\sqrt{\sigma_a^2 + \sigma_b^2 - 2 \rho \sigma_a \sigma_b}}\right)
+    .. math:: P = \Phi\left(\frac{a - b}{\sigma}\right)
 
-    with the correlation of the corrections of the two carriers as rho.
+    with `difference_sd` as sigma.
 
     Parameters
     ----------
@@ -207,14 +221,10 @@ def above(first: Standing, second: Standing) -> float:
     float
         0 to 1; one half for equal constants.
     """
-    one, other = first.half_width / NINETY, second.half_width / NINETY
-    shared = posterior_covariance(first.footprint, second.footprint)
-    correlation = shared / math.sqrt(first.footprint.variance * second.footprint.variance)
-    variance = one**2 + other**2 - 2.0 * min(max(correlation, -1.0), 1.0) * one * other
-    difference = first.value - second.value
-    if variance <= 1e-12:
+    difference, spread = first.value - second.value, difference_sd(first, second)
+    if spread <= 1e-6:
         return 0.5 if abs(difference) < 1e-9 else float(difference > 0)
-    return 0.5 * math.erfc(-difference / math.sqrt(2.0 * variance))
+    return 0.5 * math.erfc(-difference / (math.sqrt(2.0) * spread))
 
 
 def above_next(standings: Sequence[Standing | None]) -> list[float | None]:

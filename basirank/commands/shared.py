@@ -210,9 +210,11 @@ class Picture:
                 stream.write(document)
 
 
-def check_picture(output: str, inputs: Sequence[str]) -> Picture | None:
-    """The picture that an output's ending asks for, None for a table; checked before any work is done."""
-    check_output(output, inputs, (*TABLE_ENDINGS, *PICTURE_ENDINGS))
+def check_picture(
+    output: str, inputs: Sequence[str], others: Sequence[str] = TABLE_ENDINGS
+) -> Picture | None:
+    """The picture that an output's ending asks for, None for another file; checked before any work is done."""
+    check_output(output, inputs, (*others, *PICTURE_ENDINGS))
     ending = os.path.splitext(output)[1].lower()
     if ending == ".png":
         from ..plots import png_ready
