@@ -236,6 +236,23 @@ def test_a_file_that_is_not_sound_is_refused_in_one_line(local, folder, run, how
     assert done.exit_code == 2 and len(done.stderr.splitlines()) == 1
 
 
+@settings(max_examples=150, deadline=None)
+@given(st.lists(st.tuples(st.floats(0, 1, exclude_max=True), st.integers(0, 255)), min_size=1, max_size=20))
+def test_bytes_that_changed_on_the_way_are_refused_or_change_nothing(local, tmp_path_factory, changes):
+    path = tmp_path_factory.getbasetemp() / "bytes.npz"
+    save_local(local, path)
+    data = bytearray(path.read_bytes())
+    for share, byte in changes:
+        data[int(share * len(data))] = byte
+    path.write_bytes(data)
+    try:
+        back = read_local(path)
+    except InputError as error:
+        assert "\n" not in str(error)
+    else:
+        assert back.digest == local.digest
+
+
 def test_the_file_holds_nothing_that_could_run(local, tmp_path):
     save_local(local, tmp_path / "own.npz")
     with zipfile.ZipFile(tmp_path / "own.npz") as packed:
