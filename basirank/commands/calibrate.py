@@ -67,8 +67,11 @@ def command(
         raise InputError(str(error)) from None
     with open_table(inputs, smiles_column=smiles_column, stdin_format=stdin_format, warn=say) as table:
         quiet_rdkit()
-        from ..batch.compute import with_smiles
-        from ..calibration import calibrated
+        from ..batch.workers import one_thread
+
+        with one_thread():  # hundreds of small systems of equations: threads would wait for each other
+            from ..batch.compute import with_smiles
+            from ..calibration import calibrated
         from ..measurements import columns_of, measured_of
 
         columns = columns_of(table.columns, value_column, kind)
@@ -118,9 +121,7 @@ def _text(found: Calibration) -> str:
     text += aligned_table(("", "MAE", "RMSE", "bias"), figures)
     known = len({row.compound for row in found.rows if row.trained})
     if known:
-        text += (
-            f"\n\n{counted(known, 'compound')} of these stand in the training table: the first line flatters."
-        )
+        text += f"\n\n{counted(known, 'compound')} of these stand in the training table: both lines flatter, and these values count twice."
     return f"{text}\n\n{CAUTION}"
 
 
