@@ -95,7 +95,9 @@ def read_local(path: str | os.PathLike[str]) -> LocalModel:
         raise
     except OSError as error:
         raise InputError(f"{name}: {(error.strerror or str(error)).lower()}") from None
-    except Exception:  # a damaged archive fails in many ways: in its directory, in deflate, in the head of an array
+    except (
+        Exception
+    ):  # a damaged archive fails in many ways: in its directory, in deflate, in the head of an array
         raise InputError(f"{name} is no local model, or is damaged") from None
 
 

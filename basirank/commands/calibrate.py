@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 
 import click
 
+from ..batch.workers import one_thread
 from ..readers import InputError, open_table
 from ..request import Conditions
 from ..writers import TABLE_ENDINGS, TableWriter, aligned_table, check_output, open_output, shorten
@@ -55,7 +56,8 @@ def command(
 
     Example: basirank calibrate measured.csv -o series.npz, then basirank rank ideas.smi --local series.npz
     """
-    from ..local_models import ENDING
+    with one_thread():  # of many small systems of equations: more would wait for each other
+        from ..local_models import ENDING
 
     if output is not None:
         check_output(output, inputs, (ENDING,))
@@ -67,11 +69,8 @@ def command(
         raise InputError(str(error)) from None
     with open_table(inputs, smiles_column=smiles_column, stdin_format=stdin_format, warn=say) as table:
         quiet_rdkit()
-        from ..batch.workers import one_thread
-
-        with one_thread():  # hundreds of small systems of equations: threads would wait for each other
-            from ..batch.compute import with_smiles
-            from ..calibration import calibrated
+        from ..batch.compute import with_smiles
+        from ..calibration import calibrated
         from ..measurements import columns_of, measured_of
 
         columns = columns_of(table.columns, value_column, kind)
@@ -121,7 +120,8 @@ def _text(found: Calibration) -> str:
     text += aligned_table(("", "MAE", "RMSE", "bias"), figures)
     known = len({row.compound for row in found.rows if row.trained})
     if known:
-        text += f"\n\n{counted(known, 'compound')} of these stand in the training table: both lines flatter, and these values count twice."
+        text += f"\n\n{counted(known, 'compound')} of these stand in the training table: "
+        text += "both lines flatter, and these values count twice."
     return f"{text}\n\n{CAUTION}"
 
 
