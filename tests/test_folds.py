@@ -76,4 +76,4 @@ def test_all_learners_are_compared_and_do_better_than_no_answer(small):
     assert len(errors) == 7
     assert all(0.2 < error < 1.2 for error in errors.values()), errors
     exact, sparse = errors["exact Gaussian process"], errors["sparse Gaussian process (shipped)"]
-    assert exact == pytest.approx(sparse, abs=0.02)  # all sites fit into the basis
+    assert exact == pytest.approx(sparse, abs=0.05)  # nearly all sites fit into the basis
