@@ -165,10 +165,13 @@ def _finished(
         mol, numbers = neutralise(mol, numbers)
     if (not plain or notes) and not is_organic(mol):
         raise Refusal("no organic part")
-    features = written_features(text)
-    mol, numbers = rewrite(mol, numbers, features)
-    notes += _cautions(mol, features)
     smiles = Chem.MolToSmiles(mol)
+    features = written_features(smiles)
+    rewritten, numbers = rewrite(mol, numbers, features)
+    if rewritten is not mol:
+        mol, smiles = rewritten, Chem.MolToSmiles(rewritten)
+        features = written_features(smiles)
+    notes += _cautions(mol, features)
     return Parent(mol, tuple(numbers), smiles, output_order(mol), notes)
 
 

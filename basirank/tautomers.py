@@ -28,7 +28,9 @@ from basirank.tables import read_table
 # other.
 MAX_REWRITES_PER_ATOM = 2
 
-_ALL_FEATURES = frozenset({"any", "n2", "nH", "C=N", "OH+n", "OH+C=C", "N+C=C"})
+_ALL_FEATURES = frozenset({"any", "n2", "nH", "C=N", "N=O", "OH+n", "OH+C=C", "N+C=C"})
+_WRITTEN_HYDROGEN = re.compile(r"\[(?:\d|H)")
+_NITROSO = re.compile(r"N=O|O=N")
 # A ring-closure digit after "=" may close on anything, and ")=C" may belong to a nitrogen: both count.
 _DOUBLE_BONDED_NITROGEN = re.compile(r"\)=[\\/]*\[?C|N[\d%()\]\\/]*=|=[\\/]*\[?\d*N|=[\\/]*[\d%]")
 _HYDROXY_OR_MERCAPTO = re.compile(r"(?<!=)[OS](?:\)|$|\.)|^[OS]|\.[OS]|\[O|\[S")
@@ -75,20 +77,20 @@ def _groups() -> tuple[_Group, ...]:
     )
 
 
-def written_features(text: str | None) -> frozenset[str]:
-    """What a SMILES text shows of nitrogen and double bonds: the cheapest of the tests before a rewrite.
+def written_features(text: str) -> frozenset[str]:
+    """What a canonical SMILES shows of nitrogen and double bonds: the cheapest of the tests before a rewrite.
 
     Parameters
     ----------
-    text : str or None
-        SMILES as written; None, or a text with charges or written hydrogen (which may stand between two
-        neighbours), shows everything.
+    text : str
+        Canonical SMILES, aromatic atoms in small letters. One with charges, isotopes or written hydrogen (which may
+        stand between two neighbours) shows everything.
 
     Returns
     -------
     frozenset of str
-        Of ``any``, ``n2`` (two aromatic nitrogens), ``nH``, ``C=N`` (or N=O), ``OH+n`` (hydroxy or mercapto
-        group, and aromatic nitrogen or C=N), ``OH+C=C`` (likewise, and C=C or C=N) and ``N+C=C``.
+        Of ``any``, ``n2`` (two aromatic nitrogens), ``nH``, ``C=N`` (or N=O), ``N=O``, ``OH+n`` (hydroxy or
+        mercapto group, and aromatic nitrogen or C=N), ``OH+C=C`` (likewise, and C=C or C=N) and ``N+C=C``.
 
     Examples
     --------
@@ -97,7 +99,7 @@ def written_features(text: str | None) -> frozenset[str]:
     >>> sorted(written_features("CC(=N)N"))
     ['C=N', 'any']
     """
-    if text is None or "+" in text or "[H" in text:
+    if "+" in text or _WRITTEN_HYDROGEN.search(text):
         return _ALL_FEATURES
     found = ["any"]
     aromatic = text.count("n")
@@ -109,6 +111,8 @@ def written_features(text: str | None) -> frozenset[str]:
     olefin = _CARBON_CARBON_DOUBLE_BOND.search(text) is not None
     if imine:
         found.append("C=N")
+        if _NITROSO.search(text):
+            found.append("N=O")
     olefin_and_nitrogen = olefin and "N" in text
     if (aromatic or imine or olefin) and _HYDROXY_OR_MERCAPTO.search(text):
         if aromatic or imine or olefin_and_nitrogen:
@@ -132,7 +136,7 @@ def rewrite(mol: Chem.Mol, index: list[int], features: frozenset[str]) -> tuple[
         are exchanged too: the nitrogen that has no hydrogen keeps the number of the one that was drawn
         without.
     features : frozenset of str
-        What the text shows, see `written_features`.
+        What its canonical SMILES shows, see `written_features`.
 
     Returns
     -------
