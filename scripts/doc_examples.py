@@ -32,7 +32,7 @@ from tempfile import TemporaryDirectory
 from typing import Any
 
 import pandas as pd
-from click.testing import CliRunner
+from command_runner import runner
 from rdkit import Chem
 
 from basirank.cli import commands
@@ -120,7 +120,7 @@ def _session(part: str) -> str:
 def printed(command: str) -> tuple[str, int]:
     """What a command prints, standard error last, and its exit code; `basirank` alone runs in this process."""
     if command.startswith("basirank ") and not _SHELL.search(re.sub(r"\"[^\"]*\"|'[^']*'", "", command)):
-        result = CliRunner(env={"COLUMNS": "100"}).invoke(
+        result = runner(env={"COLUMNS": "100"}).invoke(
             commands, shlex.split(command, comments=True)[1:], prog_name="basirank"
         )
         return result.stdout + result.stderr, result.exit_code
