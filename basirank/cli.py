@@ -105,6 +105,8 @@ class OneLineErrors(click.Group):
             say("interrupted")
             return INTERRUPTED
         except (InputError, OutputError, MissingExtra) as error:
+            if isinstance(error, OutputError):
+                _forget_stdout()
             say(str(error))
             return WRONG_INPUT
         except OSError as error:

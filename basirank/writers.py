@@ -52,14 +52,27 @@ def check_output(output: str, inputs: Sequence[str] = (), endings: Sequence[str]
 
 
 @contextmanager
+def writing(output: str) -> Iterator[None]:
+    """Say plainly of what goes wrong in here that it is the output that cannot be written."""
+    try:
+        yield
+    except BrokenPipeError:  # whoever reads has had enough: no error of the user
+        raise
+    except OSError as error:
+        where = "standard output" if output == STDOUT else output
+        raise OutputError(f"cannot write {where}: {(error.strerror or str(error)).lower()}") from None
+
+
+@contextmanager
 def open_output(output: str) -> Iterator[TextIO]:
     """A text stream to a file that takes its name when whole, or to standard output for `-`."""
     if output == STDOUT:
         reconfigure = getattr(sys.stdout, "reconfigure", None)
         if reconfigure is not None:
             reconfigure(encoding="utf-8", errors="replace")
-        yield sys.stdout
-        sys.stdout.flush()
+        with writing(output):
+            yield sys.stdout
+            sys.stdout.flush()
         return
     with (
         _beside(output) as partial,
@@ -81,8 +94,9 @@ def _beside(output: str) -> Iterator[Path]:
     final = Path(os.path.realpath(output))
     partial = final.with_name(f".{final.name}.{os.getpid()}.part")
     try:
-        yield partial
-        os.replace(partial, final)
+        with writing(output):
+            yield partial
+            os.replace(partial, final)
     except BaseException:
         with suppress(OSError):
             partial.unlink()

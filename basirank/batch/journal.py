@@ -19,7 +19,7 @@ from dataclasses import dataclass, field, fields
 from pathlib import Path
 from typing import IO, Any
 
-from ..writers import OutputError
+from ..writers import OutputError, writing
 from .compute import Done
 
 SAVE_EVERY = 1.0  # seconds between two entries
@@ -214,15 +214,6 @@ def journal(output: str) -> Iterator[Journal]:
             finally:
                 if not kept.file.exists() or not kept.progress.rows:
                     kept.forget()
-
-
-@contextmanager
-def writing(output: str) -> Iterator[None]:
-    """Say plainly of what goes wrong in here that it is the output that cannot be written."""
-    try:
-        yield
-    except OSError as error:
-        raise OutputError(f"cannot write {output}: {(error.strerror or str(error)).lower()}") from None
 
 
 @contextmanager

@@ -14,6 +14,7 @@ from typing import IO, Any
 from ..annotation import CHUNK
 from ..readers import InputError, Table
 from ..request import Request
+from ..writers import STDOUT, writing
 from .chunks import Chunk, chunks_of
 from .cluster import by_cluster
 from .compute import Done, compute
@@ -127,14 +128,15 @@ def to_stream(
         results = engine(plan, _first_read(chunks), lambda row, reason: None)
         with closing(results):  # type: ignore[type-var]
             for number, (_, done) in enumerate(results):
-                if not number:
-                    stream.write(heading(plan))
-                stream.write(done.data)
-                stream.flush()
+                with writing(STDOUT):
+                    stream.write(done.data if number else heading(plan) + done.data)
+                    stream.flush()
                 progress.add(done)
                 show(progress.rows, table.done())
         if not progress.rows:
-            stream.write(heading(plan))
+            with writing(STDOUT):
+                stream.write(heading(plan))
+                stream.flush()
         progress.seconds = time.monotonic() - begun
         return Summary(progress, 0, table.blank_lines[0], progress.seconds)
 

@@ -11,7 +11,7 @@ from ..batch.workers import one_thread
 from ..readers import InputError, open_table
 from ..request import Conditions
 from ..writers import TABLE_ENDINGS, TableWriter, aligned_table, check_output, open_output, shorten
-from .shared import counted, input_options, quiet_rdkit, say
+from .shared import counted, input_options, quiet_rdkit, say, show
 
 if TYPE_CHECKING:
     from ..calibration import Calibrated, Calibration
@@ -79,7 +79,7 @@ def command(
         found = calibrated(measured_of(rows, columns, conditions))
     except ValueError as error:
         raise InputError(str(error)) from None
-    click.echo(_text(found))
+    show(_text(found))
     if table_file is not None:
         with open_output(table_file) as stream:
             TableWriter(stream, table_file, COLUMNS).write(_rows(found))

@@ -31,6 +31,7 @@ from .shared import (
     say,
     selection_options,
     shared_options,
+    show,
     standings_of_rows,
     summarise,
 )
@@ -99,10 +100,9 @@ def command(
     columns = schema(values, ranked=True, request=request)
     if output is None:
         width = shutil.get_terminal_size().columns if on_terminal(sys.stdout) else TABLE_WIDTH
-        click.echo(ranked_table(ranks, labels, found, surer, shown, values, width))
-        if request.conditions != STANDARD:
-            click.echo(f"\nAt {request.conditions}.")
-        click.echo(f"\n{INTERVAL_NOTE}\n{CAUTION}")
+        text = ranked_table(ranks, labels, found, surer, shown, values, width)
+        conditions = "" if request.conditions == STANDARD else f"\n\nAt {request.conditions}."
+        show(f"{text}{conditions}\n\n{INTERVAL_NOTE}\n{CAUTION}")
         return 0
     if ending == ".md":
         from ..markdown import ranked_markdown

@@ -20,6 +20,7 @@ from .shared import (
     quiet_rdkit,
     request_options,
     say,
+    show,
 )
 
 MOST_ROWS = 10_000  # compounds of one list
@@ -113,7 +114,7 @@ def command(
     ]
     target = output or STDOUT
     if output is None:
-        click.echo(selections_text(found, top, family))
+        show(selections_text(found, top, family))
     elif picture:
         from ..figures import solubility_figure
 

@@ -21,6 +21,7 @@ from .shared import (
     quiet_rdkit,
     request_options,
     say,
+    show,
 )
 
 if TYPE_CHECKING:
@@ -79,7 +80,7 @@ def command(
     from .. import scorecard
 
     if output is None or output == STDOUT:
-        click.echo(scorecard.score_text(found, worst))
+        show(scorecard.score_text(found, worst))
     elif ending in PICTURE_ENDINGS:
         from ..parity import parity_svg
 

@@ -41,6 +41,7 @@ __all__ = [
     "request_options",
     "say",
     "shared_options",
+    "show",
     "standings_of_rows",
     "summarise",
     "summary_line",
@@ -56,6 +57,12 @@ def say(message: str) -> None:
     """One line on standard error."""
     line = " ".join("".join(letter if letter.isprintable() else " " for letter in message).split())
     click.echo(f"basirank: {line}", err=True)
+
+
+def show(text: str) -> None:
+    """Text on standard output."""
+    with open_output(STDOUT) as stream:
+        stream.write(f"{text}\n")
 
 
 def shared_options(output_help: str) -> Callable[[Command], Command]:

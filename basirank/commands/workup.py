@@ -24,6 +24,7 @@ from .shared import (
     quiet_rdkit,
     request_options,
     say,
+    show,
 )
 
 if TYPE_CHECKING:
@@ -107,7 +108,7 @@ def command(
     note = "" if request.conditions == STANDARD else str(request.conditions)
     target = output or STDOUT
     if output is None:
-        click.echo(str(done))
+        show(str(done))
     elif picture:
         from ..figures import workup_figure
 
