@@ -193,7 +193,7 @@ def _parse(smiles: str) -> Chem.Mol:
         if mol is not None:
             try:
                 Chem.SanitizeMol(mol)
-            except Chem.MolSanitizeException:
+            except (Chem.MolSanitizeException, RuntimeError):  # the latter for 127 bonds and more at an atom
                 mol = None
             else:
                 mol.SetIntProp("_StereochemDone", 1)
@@ -284,7 +284,11 @@ def _parse_failure(smiles: str) -> str:
 
 def _chemistry_problem(mol: Chem.Mol) -> str:
     """Plain reason why a molecule isn't a sound structure, empty where it is."""
-    for problem in Chem.DetectChemistryProblems(mol):
+    try:
+        problems = Chem.DetectChemistryProblems(mol)
+    except RuntimeError:  # bonds of an atom are counted in a signed byte: [NH127] runs over
+        return "valence of an atom is more than it can be"
+    for problem in problems:
         if problem.GetType().startswith("AtomValence"):
             atom = mol.GetAtomWithIdx(problem.GetAtomIdx())
             return f"valence of {atom.GetSymbol()} (atom {atom.GetIdx()}) is more than it can be"

@@ -579,3 +579,18 @@ def test_what_holds_no_carbon_gets_one_answer_as_text_and_as_molecule(smiles):
         assert answer(smiles) == "no organic part"
     if smiles in ("N", "NN", "NO"):
         assert answer(smiles) == smiles
+
+
+@pytest.mark.parametrize(
+    "structure", ["C[NH127]", "COc1occ2[NH753]c1CCN2", "C[C@H](F)c1c[nH200]cc1", "[H]C[NH130]"]
+)
+def test_more_hydrogen_than_can_be_counted_is_a_refusal(structure):
+    with pytest.raises(Refusal, match="valence of an atom is more than it can be"):
+        read_parent(structure)
+
+
+def test_a_molecule_with_more_hydrogen_than_can_be_counted_is_a_refusal():
+    mol = Chem.RWMol(Chem.MolFromSmiles("CN"))
+    mol.GetAtomWithIdx(1).SetNumExplicitHs(127)
+    with pytest.raises(Refusal, match="valence of an atom is more than it can be"):
+        read_parent(mol.GetMol())
