@@ -141,8 +141,8 @@ def move_hydrogen(mol: Chem.Mol, donor: int, acceptor: int) -> Chem.RWMol | None
 
 
 def skeleton_ranks(mol: Chem.Mol) -> list[int]:
-    """Rank of each atom in the bare skeleton (elements, isotopes, charges, connections), equal for equivalent
-    atoms.
+    """Rank of each atom in the bare skeleton (elements, charges, connections, isotopes last), equal for
+    equivalent atoms.
 
     Hydrogen counts, bond orders and aromaticity don't enter: all tautomers of a compound give the same ranks,
     whatever the order of atoms.
@@ -158,7 +158,20 @@ def skeleton_ranks(mol: Chem.Mol) -> list[int]:
         atom.SetNumExplicitHs(0)
         atom.SetChiralTag(Chem.ChiralType.CHI_UNSPECIFIED)
     bare.UpdatePropertyCache(strict=False)
-    return list(Chem.CanonicalRankAtoms(bare, breakTies=False, includeChirality=False))
+    return isotopes_last(bare, include_chirality=False)
+
+
+def isotopes_last(mol: Chem.Mol, *, include_chirality: bool = True) -> list[int]:
+    """Rank of each atom, in which isotopes only part what is equal without them: a label moves no proton."""
+    ranks = list(Chem.CanonicalRankAtoms(mol, breakTies=False, includeChirality=include_chirality))
+    if not any(atom.GetIsotope() for atom in mol.GetAtoms()):
+        return ranks
+    plain = Chem.CanonicalRankAtoms(
+        mol, breakTies=False, includeChirality=include_chirality, includeIsotopes=False
+    )
+    pairs = list(zip(plain, ranks, strict=True))
+    place = {pair: rank for rank, pair in enumerate(sorted(set(pairs)))}
+    return [place[pair] for pair in pairs]
 
 
 def apply_edit(mol: Chem.RWMol, edits: Sequence[str], place: dict[int, int]) -> int | None:

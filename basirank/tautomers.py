@@ -18,6 +18,7 @@ from basirank.conjugation import (
     drop_bond_stereo,
     finish,
     flip,
+    isotopes_last,
     kekulised,
     move_hydrogen,
     skeleton_ranks,
@@ -180,7 +181,7 @@ def _one_rewrite(mol: Chem.Mol, index: list[int], groups: list[_Group]) -> tuple
 
 def _drawn_ranks(mol: Chem.Mol) -> list[int]:
     """Rank of each atom in the form that was drawn: decides between atoms that the skeleton makes equal."""
-    return list(Chem.CanonicalRankAtoms(mol, breakTies=False))
+    return isotopes_last(mol)
 
 
 def _move_by_row(mol: Chem.Mol, row: _Row) -> Chem.Mol | None:
@@ -363,7 +364,15 @@ def _smaller_smiles(mol: Chem.Mol, moved: Chem.Mol | None) -> Chem.Mol | None:
         any(a.GetChiralTag() for a in mol.GetAtoms()) or mol.HasSubstructMatch(_olefin())
     ):
         return None
-    return moved if Chem.MolToSmiles(moved) < Chem.MolToSmiles(mol) else None
+    return moved if _texts(moved) < _texts(mol) else None
+
+
+def _texts(mol: Chem.Mol) -> tuple[str, str]:
+    """Canonical SMILES without and with isotopes: the order of two forms, in which a label comes last."""
+    plain = Chem.Mol(mol)
+    for atom in plain.GetAtoms():
+        atom.SetIsotope(0)
+    return str(Chem.MolToSmiles(plain)), str(Chem.MolToSmiles(mol))
 
 
 @cache

@@ -10,6 +10,7 @@ import random
 from functools import cache
 from itertools import pairwise
 
+import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -17,6 +18,8 @@ from rdkit import Chem
 
 from basirank import graph, groups
 from basirank.annotation import annotate
+from basirank.curves import LEAST_SHARE, curves_of, ph_grid
+from basirank.explanation import explain
 from basirank.prediction import Prediction, predict
 from basirank.residual import model
 
@@ -237,6 +240,18 @@ def test_isotopes_change_no_constant(plain, marked):
 
 
 @settings(CHEMISTRY)
+@given(name=st.sampled_from(STEADY), seed=st.integers(0, 10**6))
+def test_isotopes_anywhere_change_no_constant(name, seed):
+    chance = random.Random(seed)
+    mol = Chem.MolFromSmiles(DRUGS[name])
+    for atom in mol.GetAtoms():
+        if chance.random() < 0.3:
+            atom.SetIsotope({6: 13, 7: 15, 8: 18, 16: 34, 17: 37}.get(atom.GetAtomicNum(), 0))
+    (marked,) = predict([Chem.MolToSmiles(mol, canonical=False)], ph=PH)
+    assert numbers(marked) == pytest.approx(numbers(known()[name]), abs=1e-6)
+
+
+@settings(CHEMISTRY)
 @given(name=st.sampled_from(sorted(name for name, text in DRUGS.items() if "@" in text)))
 def test_mirror_images_have_the_same_constants(name):
     mirrored = DRUGS[name].replace("@@", "#").replace("@", "@@").replace("#", "@")
@@ -261,6 +276,22 @@ def test_the_net_charge_falls_as_ph_rises_and_shares_are_shares(name, grid):
     for state in prediction.equilibrium.states:
         assert 0.0 <= state.protonated_fraction <= 1.0 + 1e-12
         assert 0.0 < state.dominant_fraction <= 1.0 + 1e-12
+
+
+@pytest.mark.parametrize("name", DRUGS)
+def test_shares_by_charge_make_up_the_whole_and_its_net_charge(name):
+    (found,) = curves_of([DRUGS[name]], [name], ph_grid(-2.0, 16.0, 0.5))
+    assert found.shares.min() >= 0.0
+    assert found.shares.sum(axis=1) == pytest.approx(np.ones(len(found.ph)), abs=2 * LEAST_SHARE)
+    assert found.shares @ found.charges == pytest.approx(found.net_charge, abs=6 * LEAST_SHARE)
+    assert found.neutral.min() >= 0.0 and (found.neutral + found.zwitterion).max() <= 1.0 + 1e-9
+
+
+@pytest.mark.parametrize("name", DRUGS)
+def test_increments_add_up_to_the_intrinsic_constant(name):
+    for site in explain(DRUGS[name]).sites:
+        assert site.terms, site.site_class
+        assert sum(term.value for term in site.terms) == pytest.approx(site.value, abs=1e-9)
 
 
 @pytest.mark.parametrize(
