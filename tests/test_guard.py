@@ -54,6 +54,7 @@ def test_predictions_are_those_that_were_accepted():
     result = guard()
     assert result.returncode == 0, result.stdout[-6000:] + result.stderr
     assert result.stdout.startswith("500 structures: 0 numbers moved")
+    assert result.stdout.endswith("; 0 lines of text changed\n")
 
 
 def test_what_moved_is_listed_largest_first_and_fails(disturbed):
@@ -71,6 +72,24 @@ def test_accepting_stores_the_present_predictions(present, disturbed):
     assert guard("--file", disturbed, "--accept").returncode == 0
     assert disturbed.read_text(encoding="utf-8") == present.read_text(encoding="utf-8")
     assert guard("--file", disturbed).returncode == 0
+
+
+def test_a_word_that_changed_in_an_explanation_is_shown_and_fails(present, tmp_path):
+    for ending in (".csv", ".txt"):
+        (tmp_path / f"guard{ending}").write_bytes(present.with_suffix(ending).read_bytes())
+    told = tmp_path / "guard.txt"
+    kept = told.read_text(encoding="utf-8")
+    assert "histidine, as Markdown" in kept and "report page, sha256" in kept
+    told.write_text(kept.replace("As a buffer", "As buffer", 1), encoding="utf-8")
+    result = guard("--file", tmp_path / "guard.csv")
+    assert result.returncode == 1
+    lines = result.stdout.splitlines()
+    assert lines[0] == "explanations and report" and lines[1].startswith("  -As buffer")
+    assert lines[-1].endswith("; 2 lines of text changed")
+    told.write_text(
+        kept.replace("with RDKit 20", "with RDKit 19").replace(kept[-20:], "0" * 19 + "\n"), encoding="utf-8"
+    )
+    assert guard("--file", tmp_path / "guard.csv").returncode == 0
 
 
 def test_a_file_that_is_none_is_one_line_on_standard_error(tmp_path):
