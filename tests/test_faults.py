@@ -7,6 +7,7 @@ import os
 import shutil
 import subprocess
 import sys
+import tempfile
 from pathlib import Path
 
 import pytest
@@ -150,11 +151,17 @@ def nobody() -> list[str]:
     return prefix
 
 
-def test_a_user_without_rights_can_work_and_is_told_where_he_may_not(lists, nobody):
-    lists.parent.chmod(0o755)
-    lists.chmod(0o755)
-    for parent in lists.parents[1:3]:
-        parent.chmod(0o755)
+def test_a_user_without_rights_can_work_and_is_told_where_he_may_not(folder, nobody, monkeypatch):
+    with tempfile.TemporaryDirectory() as open_to_read:  # pytest's own folders are closed to others
+        lists = Path(open_to_read)
+        lists.chmod(0o755)
+        monkeypatch.chdir(lists)
+        (lists / "list.smi").write_text("CCN ethylamine\n")
+        work_without_rights(lists, nobody)
+        monkeypatch.chdir(folder)
+
+
+def work_without_rights(lists: Path, nobody: list[str]) -> None:
 
     def run(*arguments: str) -> subprocess.CompletedProcess[str]:
         return subprocess.run([*nobody, *command(*arguments)], capture_output=True, text=True, cwd=lists)
