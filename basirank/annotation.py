@@ -33,7 +33,7 @@ if TYPE_CHECKING:
     from .conditioning import LocalModel
     from .kinship import Standing
 
-CHUNK = 500  # structures that go through the stages together: enough to fill the blocks of the regression
+CHUNK = 1000  # structures that go through the stages together: enough to fill the blocks of the regression
 
 
 def records_of(structures: Sequence[object], ph: Sequence[float], request: Request = PLAIN) -> list[Record]:
