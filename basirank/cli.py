@@ -10,6 +10,7 @@ from __future__ import annotations
 import os
 import signal
 import sys
+import threading
 from importlib import import_module
 from typing import Any
 
@@ -148,12 +149,26 @@ def commands(ctx: click.Context) -> None:
         click.echo(ctx.get_help())
 
 
+def _quiet() -> None:
+    """A process that is being stopped says nothing of what its closing pools and pipes run into."""
+    sys.unraisablehook = lambda problem: None
+    threading.excepthook = lambda problem: None
+
+
 def _terminate(signum: int, frame: Any) -> None:
+    _quiet()
     raise SystemExit(TERMINATED)
+
+
+def _interrupt(signum: int, frame: Any) -> None:
+    _quiet()
+    raise KeyboardInterrupt
 
 
 def main() -> None:
     """Entry point of the `basirank` command."""
     if hasattr(signal, "SIGTERM"):
         signal.signal(signal.SIGTERM, _terminate)
+    if signal.getsignal(signal.SIGINT) is signal.default_int_handler:  # not where the caller has it ignored
+        signal.signal(signal.SIGINT, _interrupt)
     commands(prog_name="basirank")

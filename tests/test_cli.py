@@ -414,7 +414,7 @@ def test_a_run_that_fails_leaves_the_old_file_and_what_the_next_one_needs(run, f
     monkeypatch.undo()
     os.chdir(folder)
     result = run("annotate", "in.smi", "-o", "out.csv")
-    assert f"going on after {basirank.annotation.CHUNK} rows" in result.stderr
+    assert f"going on after {basirank.annotation.CHUNK:,} rows" in result.stderr
     assert len(table(Path("out.csv").read_text())) == basirank.annotation.CHUNK + 1
     assert sorted(os.listdir()) == ["in.smi", "out.csv"]
 

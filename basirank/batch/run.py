@@ -25,7 +25,7 @@ from .packing import finish
 from .plan import Plan, fingerprint, plan_for
 from .workers import by_workers
 
-SMALL = 4  # chunks up to which no worker is started
+SMALL = 2  # chunks up to which no worker is started
 PATIENCE = 600.0  # seconds
 
 Engine = Callable[[Plan, Iterator[Chunk], Refuse], Iterator[tuple[Chunk, Done]]]
