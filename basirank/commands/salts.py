@@ -74,6 +74,8 @@ def command(
 
     What counts is the macroscopic step from no net charge to the ion, whatever group takes or gives the proton. With
     the intrinsic solubility, of one compound, come its solubility against pH and the pH of maximum solubility.
+
+    Example: basirank salts "CCN(CC)CC" --solubility "1 mg/mL"
     """  # fmt: skip
     picture = check_document(output, inputs)
     try:

@@ -58,6 +58,8 @@ def command(
     A row holds a structure and a value; it may say its kind (pkah or pka), step, temperature, ionic_strength and
     class in columns of these names. Without a step the value is taken for the first constant of its kind. Compounds
     in the training table are counted apart, and rows that cannot be used are named.
+
+    Example: basirank score measured.csv -o score.html
     """
     if output not in (None, STDOUT):
         check_output(output, inputs, ENDINGS)

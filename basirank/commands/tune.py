@@ -77,6 +77,8 @@ def command(
     Edits that a chemist would make (fluorine, ring, chain and N-alkyl changes, aza walks, groups on rings, ...) are
     made near the nitrogen; those in the window come first, the least change first. A protected atom (--keep) stays
     with its element, charge, hydrogens, neighbours and bonds. With --scan: what an edit does at each atom.
+
+    Example: basirank tune "Fc1ccc(CN2CCCCC2)cc1" --to 6.5:7.5
     """
     if (to is None) == (scan is None):
         raise InputError("give either --to LOW:HIGH or --scan NAME")

@@ -85,6 +85,8 @@ def command(
     INPUT of 2 to 12 compounds is taken for a mixture: washes that separate its members are looked for, with
     recovery and purity of each, and said to be impossible where pH alone cannot do it. log P is estimated from
     atom contributions (Wildman and Crippen 1999) unless a column gives it.
+
+    Example: basirank workup "OC(=O)c1ccccc1 acid" "Nc1ccccc1 base" -o plan.svg
     """  # fmt: skip
     picture = check_document(output, inputs)
     from ..extraction import Setting, workup_of
